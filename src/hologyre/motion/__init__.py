@@ -1,0 +1,6 @@
+"""Frames together: tracks of singularities, their births and deaths, how they move."""
+
+from hologyre.motion.assign import link_singularities
+from hologyre.motion.tracks import Motion
+
+__all__ = ["Motion", "link_singularities"]

@@ -1,0 +1,289 @@
+"""Linking by positions alone: one cheapest assignment per frame."""
+
+from __future__ import annotations
+
+import itertools
+from dataclasses import dataclass
+from typing import Literal
+
+import numpy as np
+import pandas as pd
+from numpy.typing import ArrayLike, NDArray
+from scipy.spatial import cKDTree
+
+from hologyre.motion.endings import Ledger
+from hologyre.motion.matching import cheapest_matching
+from hologyre.motion.steps import StepLaw
+from hologyre.motion.tracks import Links, Motion, build, checked
+
+_PAIRS_SAMPLED = 40
+
+
+def link_singularities(
+    table: pd.DataFrame,
+    *,
+    max_step_px: float | Literal["auto"] = "auto",
+    max_gap: int = 2,
+    frame_shape: tuple[int, int] | None = None,
+    margin_px: float = 0.0,
+    frames: ArrayLike | None = None,
+) -> Motion:
+    """Link singularities from frame to frame by their positions and charges.
+
+    Parameters
+    ----------
+    table : DataFrame
+        Singularities, columns `hologyre.tables.SINGULARITIES`; at least frame, y_px, x_px
+        and charge. Not changed. Frame numbers may begin anywhere and have holes.
+    max_step_px : float or "auto"
+        Longest step between two frames, px; over a gap it grows with the frames spanned.
+        "auto" takes it from the table: the lesser of thirty median steps and the mean
+        spacing of zeros of one charge.
+    max_gap : int
+        Most frames a singularity may go undetected in before its track ends.
+    frame_shape : (int, int), optional
+        Rows and columns of the hologram, whose border zeros may cross. Without it the
+        smallest rectangle around all positions is taken.
+    margin_px : float
+        Width of the rim along the border that was not searched.
+    frames : (frame,) int array, optional
+        All frames that were searched, those without singularities included. Frames left
+        out count as gaps. Without it: the frames in the table.
+
+    Returns
+    -------
+    Motion
+        Every singularity has a track, if only of one row.
+
+    Raises
+    ------
+    ValueError
+        If the table lacks a column, or an option is out of its range.
+
+    Notes
+    -----
+    Charge is a flux along time: a positive zero carries it forward, a negative one back. So
+    what ends or begins it on one side - a positive zero of the old frame, a negative one of
+    the new - is matched with what takes it up on the other, and the four kinds of match are
+    the four things that can happen: a positive zero moves on, a negative zero moves on, a
+    pair dies, a pair is born. One assignment over all of them, with the prices of `StepLaw`,
+    is the most likely account of the frame; it is found exactly, by shortest augmenting
+    paths. The charge of a track never changes. Zeros left over crossed the border, split,
+    merged, or are reported as unexplained.
+
+    Examples
+    --------
+    >>> import pandas as pd
+    >>> table = pd.DataFrame(
+    ...     {"frame": [0, 1], "y_px": [10.0, 10.5], "x_px": [20.0, 20.2], "charge": [1, 1]}
+    ... )
+    >>> link_singularities(table, max_step_px=3.0).trajectories["track"].tolist()
+    [0, 0]
+    """
+    table = checked(table)
+    if max_step_px != "auto" and not (np.isfinite(max_step_px) and max_step_px > 0):
+        raise ValueError(f'max_step_px: expected "auto" or a positive number, got {max_step_px!r}')
+    if max_gap < 0:
+        raise ValueError(f"max_gap: expected 0 or more frames, got {max_gap!r}")
+    if not margin_px >= 0:
+        raise ValueError(f"margin_px: expected 0 or more pixels, got {margin_px!r}")
+    searched = searched_frames(table, frames)
+    border = border_of(table, frame_shape, margin_px)
+    law, reach = step_law(table, border, max_step_px)
+    return build(table, assign(table, law, reach, max_gap, border, searched))
+
+
+def searched_frames(table: pd.DataFrame, frames: ArrayLike | None) -> NDArray[np.int64]:
+    """Return the frames searched, sorted, each once."""
+    present = np.unique(table["frame"].to_numpy())
+    if frames is None:
+        return present
+    searched = np.unique(np.asarray(frames, dtype=np.int64))
+    strange = np.setdiff1d(present, searched)
+    if len(strange):
+        raise ValueError(f"frames: the table has frame {strange[0]}, which is not among them")
+    return searched
+
+
+def border_of(
+    table: pd.DataFrame, frame_shape: tuple[int, int] | None, margin_px: float
+) -> tuple[float, float, float, float]:
+    """Return (y_min, y_max, x_min, x_max) of the rectangle that was searched."""
+    if frame_shape is not None:
+        ny, nx = frame_shape
+        if ny < 1 or nx < 1:
+            raise ValueError(f"frame_shape: expected two positive numbers, got {frame_shape!r}")
+        return margin_px, ny - 1.0 - margin_px, margin_px, nx - 1.0 - margin_px
+    if len(table) == 0:
+        return 0.0, 0.0, 0.0, 0.0
+    y, x = table["y_px"], table["x_px"]
+    return float(y.min()), float(y.max()), float(x.min()), float(x.max())
+
+
+def step_law(
+    table: pd.DataFrame,
+    border: tuple[float, float, float, float],
+    max_step_px: float | Literal["auto"],
+) -> tuple[StepLaw, float]:
+    """Return the law of steps and the longest step, both from the table itself.
+
+    The median step and the links it rests on are found together, by repeated assignment
+    over up to 40 pairs of neighbouring frames.
+    """
+    frame = table["frame"].to_numpy()
+    n_frames = max(len(np.unique(frame)), 1)
+    area = max((border[1] - border[0]) * (border[3] - border[2]), 1.0)
+    density = max(len(table) / 2.0, 1.0) / n_frames / area
+    spacing = 1.0 / np.sqrt(density)
+    reach = spacing if max_step_px == "auto" else float(max_step_px)
+    scale = 0.1 * min(spacing, reach)
+    position = table[["y_px", "x_px"]].to_numpy()
+    charge = table["charge"].to_numpy()
+    bounds = np.flatnonzero(np.diff(frame)) + 1
+    groups = np.split(np.arange(len(frame)), bounds)
+    pairs = list(itertools.pairwise(groups))
+    pairs = pairs[:: max(1, len(pairs) // _PAIRS_SAMPLED)]
+    for _ in range(8):
+        law = StepLaw(scale, density)
+        steps = [
+            _steps(law, reach, position, charge, before, after)
+            / float(frame[after[0]] - frame[before[0]])
+            for before, after in pairs
+        ]
+        step = np.concatenate(steps) if steps else np.empty(0)
+        if len(step) < 8:
+            break
+        # zeros at rest keep a scale: positions are never known better than this
+        new = max(float(np.median(step)), 1e-3)
+        settled = abs(new - scale) < 0.02 * scale
+        scale = new
+        if settled:
+            break
+    if max_step_px == "auto":
+        reach = min(reach, max(30.0 * scale, 1.0))
+    return StepLaw(scale, density), reach
+
+
+def _steps(
+    law: StepLaw,
+    reach: float,
+    position: NDArray[np.float64],
+    charge: NDArray[np.int64],
+    before: NDArray[np.int64],
+    after: NDArray[np.int64],
+) -> NDArray[np.float64]:
+    """Return the lengths of the links between two frames."""
+    found = []
+    for sign in (1, -1):
+        a, b = before[charge[before] == sign], after[charge[after] == sign]
+        i, j, d = near(position[a], position[b], reach)
+        alone = np.full(max(len(a), len(b)), -np.log(law.missed))
+        partner = cheapest_matching(
+            i, j, law.link(d, 1.0), left_alone=alone[: len(a)], right_alone=alone[: len(b)]
+        )
+        linked = partner >= 0
+        found.append(np.linalg.norm(position[a[linked]] - position[b[partner[linked]]], axis=1))
+    return np.concatenate(found)
+
+
+def near(
+    a: NDArray[np.float64], b: NDArray[np.float64], reach: float
+) -> tuple[NDArray[np.int64], NDArray[np.int64], NDArray[np.float64]]:
+    """Return the pairs (i, j) of points nearer than `reach`, and their distances."""
+    if len(a) == 0 or len(b) == 0:
+        nothing = np.empty(0, dtype=np.int64)
+        return nothing, nothing, np.empty(0)
+    found = cKDTree(a).sparse_distance_matrix(cKDTree(b), reach, output_type="ndarray")
+    return found["i"].astype(np.int64), found["j"].astype(np.int64), found["v"]
+
+
+@dataclass(frozen=True)
+class _Zeros:
+    """The columns an assignment needs, one entry a row."""
+
+    frame: NDArray[np.int64]
+    position: NDArray[np.float64]
+    charge: NDArray[np.int64]
+    to_border: NDArray[np.float64]
+    vanishing: NDArray[np.float64]
+
+
+def assign(
+    table: pd.DataFrame,
+    law: StepLaw,
+    reach: float,
+    max_gap: int,
+    border: tuple[float, float, float, float],
+    searched: NDArray[np.int64],
+) -> Links:
+    """Link all rows of a `checked` table, frame by frame."""
+    position = table[["y_px", "x_px"]].to_numpy()
+    y, x = position.T
+    zeros = _Zeros(
+        frame=table["frame"].to_numpy(),
+        position=position,
+        charge=table["charge"].to_numpy(),
+        to_border=np.minimum.reduce([y - border[0], border[1] - y, x - border[2], border[3] - x]),
+        vanishing=law.vanishing(table["robustness_snr"].to_numpy()),
+    )
+    ledger = Ledger(len(table))
+    begin = np.searchsorted(zeros.frame, searched)
+    end = np.searchsorted(zeros.frame, searched, side="right")
+    tips = np.arange(begin[0], end[0]) if len(searched) else np.empty(0, dtype=np.int64)
+    for k in range(1, len(searched)):
+        last, now = int(searched[k - 1]), int(searched[k])
+        rows = np.arange(begin[k], end[k])
+        if now - last > max_gap + 1:
+            # nothing is known of what happened in a hole this long: no ends, no starts
+            tips = rows
+            continue
+        tips = tips[now - zeros.frame[tips] <= max_gap + 1]
+        a, b = _match(zeros, tips, rows, law, reach, last, now)
+        ledger.record(a, b, zeros.frame[a] == now, zeros.frame[b] == now)
+        ledger.close(tips[zeros.frame[tips] == last], rows, last, now)
+        tips = np.concatenate([tips[ledger.following[tips] < 0], rows])
+    how = np.full(len(table), "", dtype=object)
+    later = np.flatnonzero(ledger.previous >= 0)
+    place = np.searchsorted(searched, zeros.frame)
+    step = place[later] - place[ledger.previous[later]]
+    how[later] = np.where(step > 1, "bridged", "assigned")
+    crossed = law.crossing(zeros.to_border, 1.0) < zeros.vanishing
+    return Links(ledger.previous, how, ledger.happenings(table, crossed, reach))
+
+
+def _match(
+    zeros: _Zeros,
+    tips: NDArray[np.int64],
+    rows: NDArray[np.int64],
+    law: StepLaw,
+    reach: float,
+    last: int,
+    now: int,
+) -> tuple[NDArray[np.int64], NDArray[np.int64]]:
+    """Return the matched rows between the ends of tracks and the zeros of a new frame."""
+    frame, charge, hole = zeros.frame, zeros.charge, now - last
+    gives = np.concatenate([tips[charge[tips] > 0], rows[charge[rows] < 0]])
+    takes = np.concatenate([rows[charge[rows] > 0], tips[charge[tips] < 0]])
+    longest = now - int(frame[tips].min(initial=last))
+    i, j, d = near(zeros.position[gives], zeros.position[takes], reach * longest)
+    a, b = gives[i], takes[j]
+    link = (frame[a] == now) != (frame[b] == now)
+    # pairs die as seen in the last frame and are born as seen in this one
+    pair = (frame[a] == frame[b]) & (frame[a] >= last) & (charge[a] == -charge[b])
+    span = np.where(link, np.abs(frame[a] - frame[b]), hole)
+    kept = np.where(link, charge[a] == charge[b], pair) & (d <= reach * span)
+    i, j, d, a, b, link, span = (v[kept] for v in (i, j, d, a, b, link, span))
+    unseen = np.where(link, span - hole, 0) * zeros.vanishing[np.where(frame[a] < now, a, b)]
+    price = np.where(link, law.link(d, span) + unseen, law.pair(d, hole))
+    alone = [
+        # a zero that waits to be seen again has paid for its end already
+        np.where(
+            frame[side] < last,
+            0.0,
+            np.minimum(zeros.vanishing[side], law.crossing(zeros.to_border[side], hole)),
+        )
+        for side in (gives, takes)
+    ]
+    partner = cheapest_matching(i, j, price, left_alone=alone[0], right_alone=alone[1])
+    matched = np.flatnonzero(partner >= 0)
+    return gives[matched], takes[partner[matched]]
