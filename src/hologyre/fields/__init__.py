@@ -1,0 +1,1 @@
+"""From fringes to complex fields: carrier, demodulation, compensation, refocusing, noise."""
