@@ -171,7 +171,7 @@ def follow(
         old, new = now[good], there[good]
         _mark_crossings(space, window, old, new, went, crossing)
         turned = heading[good, 2] * new_heading[good, 2] < 0
-        _mark_turns(space, old[turned], new[turned], went[turned], sense, ahead, turn)
+        _mark_turns(space, old[turned], new[turned], went[turned], ahead, turn)
         p[went], along[went] = new, tangent[good]
 
         arrived = ahead * (new[:, 2] - goal) >= 0
@@ -254,7 +254,6 @@ def _mark_turns(
     old: FloatArray,
     new: FloatArray,
     lines: NDArray[np.int64],
-    sense: FloatArray,
     ahead: float,
     turn: FloatArray,
 ) -> None:
@@ -262,14 +261,12 @@ def _mark_turns(
     if lines.size == 0:
         return
     low, high = old.copy(), new.copy()
-    for _ in range(40):
+    began = np.sign(space.tangent(space.jet(old)[1])[:, 2])
+    for _ in range(30):
         middle, _ = space.to_line((low + high) / 2)
-        climbing = ahead * sense[lines] * space.tangent(space.jet(middle)[1])[:, 2] > 0
-        # The old end climbs or falls; the middle takes the place of the end it is like.
-        started = ahead * sense[lines] * space.tangent(space.jet(low)[1])[:, 2] > 0
-        like_low = climbing == started
-        low = np.where(like_low[:, np.newaxis], middle, low)
-        high = np.where(like_low[:, np.newaxis], high, middle)
+        turned = (np.sign(space.tangent(space.jet(middle)[1])[:, 2]) != began)[:, np.newaxis]
+        low = np.where(turned, low, middle)
+        high = np.where(turned, middle, high)
     known = ahead * turn[lines, 2]
     farther = np.isnan(known) | (ahead * middle[:, 2] > known)
     turn[lines[farther]] = middle[farther]

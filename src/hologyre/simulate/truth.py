@@ -312,7 +312,7 @@ def check_conservation(truth: Truth, zeros: list[pd.DataFrame]) -> None:
     charge_of = truth.tracks.groupby("track")["charge"].first()
     gain = {"pair_birth": 1, "entry": 1, "pair_death": -1, "exit": -1}
     for frame in range(len(zeros) - 1):
-        change = {q: 0 for q in (-1, 1)}
+        change = {-1: 0, 1: 0}
         for event in truth.events[truth.events["frame_before"] == frame].itertuples():
             for track in event.tracks.split(";"):
                 change[int(charge_of[int(track)])] += gain[event.kind]

@@ -14,6 +14,9 @@ from hologyre.simulate.wave import FloatArray, Wave
 _CELLS = 10
 _REFINEMENTS = 4
 _NEWTON_STEPS = 60
+# After this many steps starts that came this close together, in finest lengths, go on as one.
+_MERGE_AFTER = 4
+_MERGED = 1e-5
 # Two ends of Newton's method closer than this share of the finest length are one zero.
 _SAME = 1e-6
 # Below this 2 s1 s2 / (s1^2 + s2^2) of the Jacobian, or after this many Newton steps (linear
@@ -159,6 +162,9 @@ def _newton(
         taken[active[done]] = step
         strayed = np.hypot(y[active] - start_y[active], x[active] - start_x[active])
         active = active[~done & (strayed < wave.finest_px / 2)]
+        if step == _MERGE_AFTER:
+            spots = np.stack([y[active], x[active]], axis=1) / (_MERGED * wave.finest_px)
+            active = active[np.unique(np.rint(spots), axis=0, return_index=True)[1]]
     # Zeros of higher order creep up by a constant factor and are as good as they get.
     jet = wave.jet(y[active], x[active], t)
     dy, dx, _ = solve_step(jet.value, jet.dy, jet.dx)
