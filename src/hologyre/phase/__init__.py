@@ -1,0 +1,1 @@
+"""Phase of one field: residues, unwrapping with its cuts, smooth and singular parts."""
