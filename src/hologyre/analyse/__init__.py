@@ -1,0 +1,24 @@
+"""A stack and a resolved recipe in; fields, singularities and their motion out."""
+
+from __future__ import annotations
+
+from hologyre.analyse.analysis import Analysis, LazyFields, analyse
+from hologyre.analyse.frame import FrameResult, field_of, measure
+from hologyre.analyse.iterate import iter_frames
+from hologyre.analyse.motion import frame_table, join_singularities, link
+from hologyre.analyse.planning import Plan, plan
+
+__all__ = [
+    "Analysis",
+    "FrameResult",
+    "LazyFields",
+    "Plan",
+    "analyse",
+    "field_of",
+    "frame_table",
+    "iter_frames",
+    "join_singularities",
+    "link",
+    "measure",
+    "plan",
+]

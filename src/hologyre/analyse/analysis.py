@@ -1,0 +1,170 @@
+"""The whole analysis of a stack as one value."""
+
+from __future__ import annotations
+
+from collections.abc import Callable, Iterator, Sequence
+from dataclasses import dataclass
+from typing import overload
+
+import dask.array as da
+import numpy as np
+import pandas as pd
+import xarray as xr
+from numpy.typing import ArrayLike, NDArray
+
+from hologyre.analyse.frame import FrameResult, field_of
+from hologyre.analyse.iterate import iter_frames
+from hologyre.analyse.motion import frame_table, join_singularities, link
+from hologyre.analyse.planning import Plan, plan
+from hologyre.fields.interpolate import on_pixels
+from hologyre.grid import Field
+from hologyre.phase.unwrap import unwrap
+from hologyre.recipe import Recipe
+from hologyre.stacks import as_stack
+from hologyre.survey import survey
+
+Progress = Callable[[int, int], None]
+
+
+@dataclass(frozen=True, eq=False)
+class LazyFields(Sequence[Field]):
+    """The fields of the frames that were measured, each read again from the stack when asked for.
+
+    Parameters
+    ----------
+    frames : tuple of int
+        Frame number of each.
+    plan : Plan
+        What reads them.
+    """
+
+    frames: tuple[int, ...]
+    plan: Plan
+
+    def __len__(self) -> int:
+        return len(self.frames)
+
+    @overload
+    def __getitem__(self, index: int) -> Field: ...
+    @overload
+    def __getitem__(self, index: slice) -> LazyFields: ...
+    def __getitem__(self, index: int | slice) -> Field | LazyFields:
+        if isinstance(index, slice):
+            return LazyFields(self.frames[index], self.plan)
+        return field_of(self.plan, self.frames[index])
+
+    def __iter__(self) -> Iterator[Field]:
+        return (field_of(self.plan, frame) for frame in self.frames)
+
+
+@dataclass(frozen=True, eq=False)
+class Analysis:
+    """What `analyse` finds in a stack.
+
+    Parameters
+    ----------
+    stack : DataArray (t, y, x)
+        The holograms, lazy.
+    recipe : Recipe
+        As used; nothing in it is "auto".
+    fields : sequence of Field
+        Complex fields of the frames that were measured, lazy, kept on their band.
+    singularities, trajectories, events, frames : DataFrame
+        Columns as in `hologyre.tables`.
+    """
+
+    stack: xr.DataArray
+    recipe: Recipe
+    fields: LazyFields
+    singularities: pd.DataFrame
+    trajectories: pd.DataFrame
+    events: pd.DataFrame
+    frames: pd.DataFrame
+
+    @property
+    def phase(self) -> xr.DataArray:
+        """Wrapped phase on the hologram's pixels, rad in (-pi, pi], (t, y, x), lazy."""
+        return self._by_frame(_wrapped, "phase")
+
+    @property
+    def unwrapped(self) -> xr.DataArray:
+        """Unwrapped phase on the hologram's pixels, rad, (t, y, x), lazy.
+
+        The cuts each frame took are given by ``hologyre.unwrap`` on that frame's phase.
+        """
+        return self._by_frame(_unwrapped, "unwrapped")
+
+    def _by_frame(self, of: Callable[[Field], NDArray[np.float32]], name: str) -> xr.DataArray:
+        shape = (self.stack.sizes["y"], self.stack.sizes["x"])
+        frames = np.array(self.fields.frames, dtype=np.int64)
+        plan = self.fields.plan
+
+        def block(numbers: NDArray[np.int64]) -> NDArray[np.float32]:
+            return of(field_of(plan, int(numbers[0, 0, 0])))[None]
+
+        numbers = da.from_array(frames[:, None, None], chunks=1)
+        values = da.map_blocks(
+            block, numbers, dtype=np.float32, chunks=((1,) * len(frames), *((n,) for n in shape))
+        )
+        return xr.DataArray(values, dims=("t", "y", "x"), coords={"t": frames}, name=name)
+
+
+def analyse(
+    stack: xr.DataArray | ArrayLike,
+    recipe: Recipe | None = None,
+    *,
+    workers: int = 1,
+    progress: Progress | None = None,
+) -> Analysis:
+    """Analyse a whole stack: fields, phase singularities, their tracks and events.
+
+    Parameters
+    ----------
+    stack : DataArray from `open_stack`, or (t, y, x) or (y, x) real array
+        Holograms.
+    recipe : Recipe, optional
+        Nothing in it may be "auto". Without one the stack is surveyed first.
+    workers : int
+        Threads that work on frames side by side. Results do not depend on it.
+    progress : callable, optional
+        Called with (frames finished, frames in all) after each frame.
+
+    Returns
+    -------
+    Analysis
+
+    Raises
+    ------
+    SurveyError
+        If there is no recipe and no frame has fringes.
+    RecipeError
+        If the recipe has anything "auto" left or does not fit the stack.
+    """
+    stack = as_stack(stack)
+    planned = plan(stack, survey(stack) if recipe is None else recipe)
+    results: list[FrameResult] = []
+    for result in iter_frames(planned, workers=workers):
+        results.append(result)
+        if progress is not None:
+            progress(len(results), len(planned.all_frames))
+    done = tuple(result.frame for result in results if result.status == "done")
+    singularities = join_singularities(result.singularities for result in results)
+    motion = link(planned, singularities, done)
+    return Analysis(
+        stack,
+        planned.recipe,
+        LazyFields(done, planned),
+        singularities,
+        motion.trajectories,
+        motion.events,
+        frame_table((result.row for result in results), motion),
+    )
+
+
+def _wrapped(field: Field) -> NDArray[np.float32]:
+    phase = np.angle(on_pixels(field)).astype(np.float32)
+    return np.where(phase <= -np.float32(np.pi), np.float32(np.pi), phase)
+
+
+def _unwrapped(field: Field) -> NDArray[np.float32]:
+    return np.asarray(unwrap(_wrapped(field)).phase, dtype=np.float32)

@@ -1,0 +1,195 @@
+"""One frame: from counts to its field, its singularities and its row of the table."""
+
+from __future__ import annotations
+
+from dataclasses import dataclass, replace
+from typing import Any, Literal
+
+import numpy as np
+import pandas as pd
+from numpy.typing import NDArray
+
+from hologyre.analyse.planning import Plan
+from hologyre.fields.carrier import NoFringes, find_carrier
+from hologyre.fields.demodulate import demodulate
+from hologyre.fields.interpolate import evaluate
+from hologyre.fields.noise import field_noise
+from hologyre.grid import Field, Window
+from hologyre.singularities.locate import locate_singularities
+from hologyre.stacks import StackError
+from hologyre.survey import frame_fault, read_counts, saturation_of
+from hologyre.tables import SINGULARITIES, conform, empty
+
+# band power over noise power, and visibility, under which a frame is asked whether it has fringes
+_FAINT_POWER = 4.0
+_FAINT_VISIBILITY = 0.05
+
+
+@dataclass(frozen=True, eq=False)
+class FrameResult:
+    """What one frame gave.
+
+    Parameters
+    ----------
+    frame : int
+        The stack's own frame number.
+    status : "done" or "skipped"
+        Skipped frames have a `reason` and neither field nor singularities.
+    field : Field or None
+        The complex field kept on its band, in the coordinates of the whole hologram.
+    singularities : DataFrame
+        Columns `hologyre.tables.SINGULARITIES`.
+    row : dict
+        The frame's row of `hologyre.tables.FRAMES`.
+    """
+
+    frame: int
+    status: Literal["done", "skipped"]
+    reason: str
+    field: Field | None
+    singularities: pd.DataFrame
+    row: dict[str, Any]
+
+
+def measure(plan: Plan, frame: int) -> FrameResult:
+    """Analyse one frame."""
+    if frame in plan.left_out:
+        return _skipped(plan, frame, plan.left_out[frame])
+    saturation = saturation_of(plan.recipe)
+    try:
+        counts = read_counts(plan.stack, frame, plan.recipe)
+    except StackError as error:
+        return _skipped(plan, frame, str(error))
+    known: dict[str, Any] = {}
+    if saturation is not None:
+        known["saturated"] = float(np.mean(counts >= saturation))
+    fault = frame_fault(counts, saturation)
+    if fault:
+        return _skipped(plan, frame, fault.reason, known)
+    field = _field(plan, counts)
+    settings = plan.recipe.field
+    noise = field_noise(
+        counts, plan.carrier, edges=settings.edges, window=settings.window, blanks=plan.blanks
+    )
+    power = float(np.mean(np.abs(field.values) ** 2, dtype=np.float64))
+    known["noise"] = noise.rms
+    known["visibility"] = 2 * power**0.5 / float(np.mean(counts, dtype=np.float64))
+    if power < _FAINT_POWER * noise.rms**2:
+        return _skipped(plan, frame, "no fringes: the sideband is no stronger than noise", known)
+    if known["visibility"] < _FAINT_VISIBILITY:
+        found = find_carrier(counts, radius=plan.carrier.radius)
+        if isinstance(found, NoFringes):
+            return _skipped(plan, frame, f"no fringes: {found.reason}", known)
+    table = locate_singularities(field, noise=noise, margin_px=plan.recipe.singularities.margin_px)
+    known["border_winding"] = border_winding(field, plan.recipe.singularities.margin_px)
+    return _done(plan, frame, field, table, known)
+
+
+def field_of(plan: Plan, frame: int) -> Field:
+    """Read one frame's field and nothing else, in the coordinates of the whole hologram.
+
+    Raises
+    ------
+    ValueError
+        If the frame is one that cannot be read or is plainly unusable.
+    """
+    counts = read_counts(plan.stack, frame, plan.recipe)
+    fault = frame_fault(counts, saturation_of(plan.recipe))
+    if fault:
+        raise ValueError(f"frame: {frame} cannot be used: {fault.reason}")
+    return _in_whole(plan, _field(plan, counts))
+
+
+def _field(plan: Plan, counts: NDArray[Any]) -> Field:
+    settings = plan.recipe.field
+    return demodulate(
+        counts,
+        plan.carrier,
+        edges=settings.edges,
+        window=settings.window,
+        precision=settings.precision,
+        blanks=plan.blanks,
+    )
+
+
+def border_winding(field: Field, margin_px: float = 0.0) -> int:
+    """Return the turns of the phase along the border of the field's valid part.
+
+    It is the net charge inside when every singularity is found.
+    """
+    valid = field.grid.valid
+    y = _side(valid.y_min + margin_px, valid.y_max - margin_px, field.radius_per_px)
+    x = _side(valid.x_min + margin_px, valid.x_max - margin_px, field.radius_per_px)
+    # from +x to +y: along the top, down the right, back along the bottom, up the left
+    path_y = np.concatenate([np.full(x.size, y[0]), y, np.full(x.size, y[-1]), y[::-1]])
+    path_x = np.concatenate([x, np.full(y.size, x[-1]), x[::-1], np.full(y.size, x[0])])
+    value, _, _ = evaluate(field, path_y, path_x)
+    return round(float(np.angle(np.roll(value, -1) * value.conj()).sum() / (2 * np.pi)))
+
+
+def _side(first: float, last: float, radius: float) -> NDArray[np.float64]:
+    # 32 points in a shortest wavelength: a step of the phase past pi needs a zero this near
+    return np.linspace(first, last, max(2, int((last - first) * radius * 32) + 1))
+
+
+def _row(plan: Plan, frame: int, **known: Any) -> dict[str, Any]:
+    interval = plan.optics.frame_interval_s
+    return {
+        "frame": frame,
+        "time_s": float("nan") if interval is None else frame * interval,
+        "fy_per_px": plan.carrier.fy,
+        "fx_per_px": plan.carrier.fx,
+        **known,
+    }
+
+
+def _skipped(
+    plan: Plan, frame: int, reason: str, known: dict[str, Any] | None = None
+) -> FrameResult:
+    row = _row(plan, frame, status="skipped", reason=reason, **(known or {}))
+    return FrameResult(frame, "skipped", reason, None, empty(SINGULARITIES), row)
+
+
+def _done(
+    plan: Plan, frame: int, field: Field, table: pd.DataFrame, known: dict[str, Any]
+) -> FrameResult:
+    region = plan.recipe.stack.region or (0, 0, 0, 0)
+    y_px, x_px = table["y_px"] + region[0], table["x_px"] + region[2]
+    pixel = plan.optics.pixel_um or float("nan")
+    row = _row(
+        plan,
+        frame,
+        status="done",
+        reason="",
+        positive=int((table["charge"] > 0).sum()),
+        negative=int((table["charge"] < 0).sum()),
+        z_um=plan.recipe.refocus.distance_um,
+        **known,
+    )
+    table = table.assign(
+        frame=frame,
+        time_s=row["time_s"],
+        y_px=y_px,
+        x_px=x_px,
+        y_um=y_px * pixel,
+        x_um=x_px * pixel,
+    )
+    whole = _in_whole(plan, field)
+    return FrameResult(frame, "done", "", whole, conform(table, SINGULARITIES), row)
+
+
+def _in_whole(plan: Plan, field: Field) -> Field:
+    """Give a field read from a region of the hologram its place in the whole."""
+    if plan.recipe.stack.region is None:
+        return field
+    y, _, x, _ = plan.recipe.stack.region
+    grid, valid = field.grid, field.grid.valid
+    moved = replace(
+        grid,
+        frame_shape=plan.frame_shape,
+        origin_px=(grid.origin_px[0] + y, grid.origin_px[1] + x),
+        valid=Window(valid.y_min + y, valid.y_max + y, valid.x_min + x, valid.x_max + x),
+    )
+    # the carrier's phase is counted from the hologram's first pixel
+    turn = np.exp(-2j * np.pi * (plan.carrier.fy * y + plan.carrier.fx * x))
+    return replace(field, values=field.values * turn.astype(field.values.dtype), grid=moved)

@@ -1,0 +1,103 @@
+"""Frame after frame, in order, by one worker or many."""
+
+from __future__ import annotations
+
+from collections import deque
+from collections.abc import Callable, Iterable, Iterator, Sequence
+from concurrent.futures import Future, ThreadPoolExecutor
+from functools import partial
+from typing import Any
+
+import xarray as xr
+from numpy.typing import ArrayLike
+
+from hologyre.analyse.frame import FrameResult, measure
+from hologyre.analyse.planning import Plan, plan
+from hologyre.recipe import Recipe
+
+
+def iter_frames(
+    stack: xr.DataArray | ArrayLike | Plan,
+    recipe: Recipe | None = None,
+    *,
+    frames: Iterable[int] | None = None,
+    workers: int = 1,
+    scheduler: str | None = None,
+) -> Iterator[FrameResult]:
+    """Analyse frame by frame, in order; closing the iterator cancels what is left.
+
+    Parameters
+    ----------
+    stack : DataArray from `open_stack`, real array, or Plan
+        Holograms.
+    recipe : Recipe
+        Resolved, as by `hologyre.survey`; not with a Plan.
+    frames : iterable of int, optional
+        Only these frame numbers of those the recipe chooses.
+    workers : int
+        Threads that work on frames side by side. Results do not depend on it.
+    scheduler : str, optional
+        Address of a dask scheduler to compute on instead, as ``tcp://host:8786``.
+
+    Yields
+    ------
+    FrameResult
+
+    Raises
+    ------
+    RecipeError
+        If the recipe has anything "auto" left or does not fit the stack.
+    """
+    if isinstance(stack, Plan):
+        planned = stack
+    elif recipe is None:
+        raise TypeError("recipe: expected a Recipe, got None; make one with hologyre.survey")
+    else:
+        planned = plan(stack, recipe)
+    if workers < 1:
+        raise ValueError(f"workers: expected 1 or more, got {workers!r}")
+    wanted = planned.all_frames
+    if frames is not None:
+        chosen = set(frames)
+        wanted = tuple(frame for frame in wanted if frame in chosen)
+    work = partial(measure, planned)
+    if scheduler is not None:
+        return _on_cluster(work, wanted, scheduler)
+    return _in_threads(work, wanted, workers) if workers > 1 else map(work, wanted)
+
+
+def _in_threads(
+    work: Callable[[int], FrameResult], frames: Sequence[int], workers: int
+) -> Iterator[FrameResult]:
+    pool = ThreadPoolExecutor(workers, thread_name_prefix="hologyre-frame")
+    try:
+        yield from _ordered(lambda frame: pool.submit(work, frame), frames, 2 * workers)
+    finally:
+        pool.shutdown(wait=True, cancel_futures=True)
+
+
+def _on_cluster(
+    work: Callable[[int], FrameResult], frames: Sequence[int], address: str
+) -> Iterator[FrameResult]:
+    from distributed import Client
+
+    with Client(address, set_as_default=False) as client:
+        ahead = 2 * max(1, sum(client.nthreads().values()))
+        yield from _ordered(lambda frame: client.submit(work, frame, pure=False), frames, ahead)
+
+
+def _ordered(
+    submit: Callable[[int], Any], frames: Sequence[int], ahead: int
+) -> Iterator[FrameResult]:
+    """Keep a few frames under way and give them back in order."""
+    waiting: deque[Future[FrameResult]] = deque()
+    try:
+        for frame in frames:
+            waiting.append(submit(frame))
+            if len(waiting) >= ahead:
+                yield waiting.popleft().result()
+        while waiting:
+            yield waiting.popleft().result()
+    finally:
+        for future in waiting:
+            future.cancel()

@@ -1,0 +1,58 @@
+"""Frames together: from the singularities of all frames to tracks, events and frame totals."""
+
+from __future__ import annotations
+
+from collections.abc import Iterable, Mapping
+from typing import Any
+
+import pandas as pd
+
+from hologyre.analyse.planning import Plan
+from hologyre.motion import Motion, link_singularities
+from hologyre.tables import EVENTS, FRAMES, SINGULARITIES, TRAJECTORIES, conform, empty
+
+
+def join_singularities(tables: Iterable[pd.DataFrame]) -> pd.DataFrame:
+    """Put the tables of frames together, singularities numbered through."""
+    kept = [table for table in tables if len(table)]
+    if not kept:
+        return empty(SINGULARITIES)
+    joined = pd.concat(kept, ignore_index=True)
+    joined["singularity"] = range(len(joined))
+    return conform(joined, SINGULARITIES)
+
+
+def link(plan: Plan, singularities: pd.DataFrame, done: Iterable[int]) -> Motion:
+    """Link the singularities of the frames that were measured."""
+    searched = sorted(done)
+    if len(searched) < 2:
+        return Motion(empty(TRAJECTORIES), empty(EVENTS))
+    settings = plan.recipe.motion
+    if settings.max_step_px == "auto":
+        raise ValueError('motion.max_step_px: still "auto"')
+    motion = link_singularities(
+        singularities,
+        max_step_px=settings.max_step_px,
+        max_gap=settings.max_gap,
+        frame_shape=plan.frame_shape,
+        margin_px=plan.recipe.singularities.margin_px,
+        frames=searched,
+    )
+    return Motion(motion.trajectories, _located(plan, motion.events))
+
+
+def frame_table(rows: Iterable[Mapping[str, Any]], motion: Motion) -> pd.DataFrame:
+    """Return the table of frames."""
+    return conform(pd.DataFrame(list(rows)), FRAMES)
+
+
+def _located(plan: Plan, events: pd.DataFrame) -> pd.DataFrame:
+    """Fill in micrometres and, where the moment is not known better, the middle in time."""
+    pixel = plan.optics.pixel_um or float("nan")
+    interval = plan.optics.frame_interval_s or float("nan")
+    middle = (events["frame_before"] + events["frame_after"]) / 2 * interval
+    return events.assign(
+        time_s=events["time_s"].fillna(middle),
+        y_um=events["y_px"] * pixel,
+        x_um=events["x_px"] * pixel,
+    )
