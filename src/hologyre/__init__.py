@@ -5,22 +5,122 @@ Names are imported on first use, so that ``import hologyre`` stays fast and need
 
 from __future__ import annotations
 
+import sys
 from importlib import import_module
+from types import ModuleType
 from typing import TYPE_CHECKING, Any
 
 if TYPE_CHECKING:
-    from hologyre.grid import Field, Grid
+    from hologyre.analyse import Analysis, FrameResult, analyse, iter_frames
+    from hologyre.fields.blanks import Blanks
+    from hologyre.fields.carrier import Carrier, NoFringes, find_carrier
+    from hologyre.fields.demodulate import demodulate
+    from hologyre.fields.interpolate import evaluate, on_pixels, resample
+    from hologyre.fields.noise import NoiseMap, field_noise
+    from hologyre.fields.wavevector import current, local_wavevector
+    from hologyre.grid import Field, Grid, Window
+    from hologyre.motion import Motion, link_singularities
     from hologyre.optics import Optics
+    from hologyre.phase.residues import residues
+    from hologyre.phase.unwrap import Unwrapped, unwrap
+    from hologyre.recipe import Recipe, RecipeError, load_recipe, save_recipe
+    from hologyre.results import OutputError, load_result
+    from hologyre.singularities.locate import locate_singularities
+    from hologyre.stacks import StackError, open_stack
+    from hologyre.survey import SurveyError, survey
 
 __version__ = "0.1.0"
 
 _HOMES = {
+    "Analysis": "hologyre.analyse",
+    "Blanks": "hologyre.fields.blanks",
+    "Carrier": "hologyre.fields.carrier",
     "Field": "hologyre.grid",
+    "FrameResult": "hologyre.analyse",
     "Grid": "hologyre.grid",
+    "Motion": "hologyre.motion",
+    "NoFringes": "hologyre.fields.carrier",
+    "NoiseMap": "hologyre.fields.noise",
     "Optics": "hologyre.optics",
+    "OutputError": "hologyre.results",
+    "Recipe": "hologyre.recipe",
+    "RecipeError": "hologyre.recipe",
+    "StackError": "hologyre.stacks",
+    "SurveyError": "hologyre.survey",
+    "Unwrapped": "hologyre.phase.unwrap",
+    "Window": "hologyre.grid",
+    "analyse": "hologyre.analyse",
+    "current": "hologyre.fields.wavevector",
+    "demodulate": "hologyre.fields.demodulate",
+    "evaluate": "hologyre.fields.interpolate",
+    "field_noise": "hologyre.fields.noise",
+    "find_carrier": "hologyre.fields.carrier",
+    "iter_frames": "hologyre.analyse",
+    "link_singularities": "hologyre.motion",
+    "load_recipe": "hologyre.recipe",
+    "load_result": "hologyre.results",
+    "local_wavevector": "hologyre.fields.wavevector",
+    "locate_singularities": "hologyre.singularities.locate",
+    "on_pixels": "hologyre.fields.interpolate",
+    "open_stack": "hologyre.stacks",
+    "resample": "hologyre.fields.interpolate",
+    "residues": "hologyre.phase.residues",
+    "save_recipe": "hologyre.recipe",
+    "survey": "hologyre.survey",
+    "unwrap": "hologyre.phase.unwrap",
 }
 
-__all__ = ["Field", "Grid", "Optics"]
+__all__ = [
+    "Analysis",
+    "Blanks",
+    "Carrier",
+    "Field",
+    "FrameResult",
+    "Grid",
+    "Motion",
+    "NoFringes",
+    "NoiseMap",
+    "Optics",
+    "OutputError",
+    "Recipe",
+    "RecipeError",
+    "StackError",
+    "SurveyError",
+    "Unwrapped",
+    "Window",
+    "analyse",
+    "current",
+    "demodulate",
+    "evaluate",
+    "field_noise",
+    "find_carrier",
+    "iter_frames",
+    "link_singularities",
+    "load_recipe",
+    "load_result",
+    "local_wavevector",
+    "locate_singularities",
+    "on_pixels",
+    "open_stack",
+    "resample",
+    "residues",
+    "save_recipe",
+    "survey",
+    "unwrap",
+]
+
+
+class _Package(ModuleType):
+    """Two functions are called like the modules they live in; the functions win."""
+
+    def __setattr__(self, name: str, value: object) -> None:
+        # the import system sets a submodule here once it is loaded
+        if isinstance(value, ModuleType) and name in _HOMES:
+            value = getattr(value, name)
+        super().__setattr__(name, value)
+
+
+sys.modules[__name__].__class__ = _Package
 
 
 def __getattr__(name: str) -> Any:

@@ -75,11 +75,16 @@ class Analysis:
 
     stack: xr.DataArray
     recipe: Recipe
-    fields: LazyFields
+    fields: Sequence[Field]
     singularities: pd.DataFrame
     trajectories: pd.DataFrame
     events: pd.DataFrame
     frames: pd.DataFrame
+
+    @property
+    def measured(self) -> tuple[int, ...]:
+        """Numbers of the frames `fields` holds."""
+        return tuple(self.frames["frame"][self.frames["status"] == "done"].tolist())
 
     @property
     def phase(self) -> xr.DataArray:
@@ -95,18 +100,17 @@ class Analysis:
         return self._by_frame(_unwrapped, "unwrapped")
 
     def _by_frame(self, of: Callable[[Field], NDArray[np.float32]], name: str) -> xr.DataArray:
-        shape = (self.stack.sizes["y"], self.stack.sizes["x"])
-        frames = np.array(self.fields.frames, dtype=np.int64)
-        plan = self.fields.plan
+        done = np.array(self.measured, dtype=np.int64)
+        fields, shape = self.fields, (self.stack.sizes["y"], self.stack.sizes["x"])
 
-        def block(numbers: NDArray[np.int64]) -> NDArray[np.float32]:
-            return of(field_of(plan, int(numbers[0, 0, 0])))[None]
+        def block(index: NDArray[np.int64]) -> NDArray[np.float32]:
+            return of(fields[int(index[0, 0, 0])])[None]
 
-        numbers = da.from_array(frames[:, None, None], chunks=1)
+        numbers = da.arange(len(done), chunks=1, dtype=np.int64)[:, None, None]
         values = da.map_blocks(
-            block, numbers, dtype=np.float32, chunks=((1,) * len(frames), *((n,) for n in shape))
+            block, numbers, dtype=np.float32, chunks=((1,) * len(done), *((n,) for n in shape))
         )
-        return xr.DataArray(values, dims=("t", "y", "x"), coords={"t": frames}, name=name)
+        return xr.DataArray(values, dims=("t", "y", "x"), coords={"t": done}, name=name)
 
 
 def analyse(

@@ -1,0 +1,70 @@
+"""Read a result folder back."""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+from pathlib import Path
+from typing import Any
+
+import pandas as pd
+
+from hologyre.recipe import Recipe, load_recipe
+from hologyre.results.fields import KeptFields, read_fields
+from hologyre.results.files import OutputError, read_csv
+from hologyre.results.folder import read_run
+from hologyre.tables import EVENTS, FRAMES, SINGULARITIES, TRAJECTORIES
+
+
+@dataclass(frozen=True, eq=False)
+class Result:
+    """What a run wrote.
+
+    Parameters
+    ----------
+    folder : Path
+    recipe : Recipe
+        As used.
+    run : dict
+        Content of run.json.
+    singularities, trajectories, events, frames : DataFrame
+        Columns as in `hologyre.tables`.
+    fields : sequence of Field, or None
+        Lazy; None unless they were kept.
+    """
+
+    folder: Path
+    recipe: Recipe
+    run: dict[str, Any]
+    singularities: pd.DataFrame
+    trajectories: pd.DataFrame
+    events: pd.DataFrame
+    frames: pd.DataFrame
+    fields: KeptFields | None
+
+
+def load_result(folder: str | Path) -> Result:
+    """Read the result folder of a finished or interrupted run.
+
+    Raises
+    ------
+    OutputError
+        If the folder holds no result.
+    """
+    folder = Path(folder)
+    run = read_run(folder)
+    if run is None:
+        raise OutputError(
+            f"{folder}: holds no result (run.json is missing); name a folder hologyre run wrote."
+        )
+    names = {name: folder / written for name, written in run["files"].items()}
+    kept = names.get("fields.zarr")
+    return Result(
+        folder,
+        load_recipe(names["recipe.toml"]),
+        run,
+        read_csv(names["singularities.csv"], SINGULARITIES),
+        read_csv(names["trajectories.csv"], TRAJECTORIES),
+        read_csv(names["events.csv"], EVENTS),
+        read_csv(names["frames.csv"], FRAMES),
+        None if kept is None else read_fields(kept),
+    )

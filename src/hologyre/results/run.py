@@ -1,0 +1,315 @@
+"""A whole run: from a stack to a folder of results."""
+
+from __future__ import annotations
+
+import json
+import platform
+import time
+from collections.abc import Callable, Generator
+from contextlib import suppress
+from dataclasses import dataclass
+from importlib import metadata
+from pathlib import Path
+from typing import Any, Literal
+
+import pandas as pd
+import xarray as xr
+
+from hologyre.analyse import (
+    Analysis,
+    Plan,
+    frame_table,
+    iter_frames,
+    join_singularities,
+    link,
+    plan,
+)
+from hologyre.recipe import Recipe, recipe_text
+from hologyre.results.fields import write_fields
+from hologyre.results.files import csv_bytes, require_writable, write_whole
+from hologyre.results.folder import Existing, check_free, enter
+from hologyre.results.store import FrameStore, Job, StoredFields
+from hologyre.stacks import fingerprint
+from hologyre.survey import SurveyError, survey
+from hologyre.tables import EVENTS, FRAMES, SINGULARITIES, TRAJECTORIES
+
+Progress = Callable[[int, int], None]
+Draw = Callable[[Analysis], bytes]
+Status = Literal["done", "interrupted"]
+
+_PACKAGES = ("numpy", "scipy", "numba", "pandas", "tifffile", "dask")
+
+
+@dataclass(frozen=True)
+class RunSummary:
+    """What a run made, in numbers.
+
+    Parameters
+    ----------
+    folder : Path
+        Where the results are.
+    name : str
+        The stack's name.
+    status : "done" or "interrupted"
+    frames, done, skipped : int
+        Frames asked for, measured, and left out.
+    singularities, tracks, events : int
+        Rows of the tables.
+    warnings : tuple of str
+        What the user should know.
+    files : dict
+        From the name of each file to where it was written.
+    """
+
+    folder: Path
+    name: str
+    status: Status
+    frames: int
+    done: int
+    skipped: int
+    singularities: int
+    tracks: int
+    events: int
+    warnings: tuple[str, ...]
+    files: dict[str, Path]
+
+
+def run(
+    stack: xr.DataArray,
+    folder: str | Path,
+    recipe: Recipe | None = None,
+    *,
+    existing: Existing = "refuse",
+    workers: int = 1,
+    scheduler: str | None = None,
+    keep_fields: bool = False,
+    progress: Progress | None = None,
+    draw: Draw | None = None,
+) -> RunSummary:
+    """Analyse a stack and write the results into a folder.
+
+    Every finished frame is kept at once, so that a run that ends before its time can be
+    resumed and then writes the same files. KeyboardInterrupt ends it early: what is finished
+    is linked and written, with the status "interrupted".
+
+    Parameters
+    ----------
+    stack : DataArray from `open_stack`
+        Holograms.
+    folder : path
+        Made if missing.
+    recipe : Recipe, optional
+        What it leaves "auto", or all, is surveyed.
+    existing : "refuse", "replace" or "resume"
+        What to do about a run that is in the folder already.
+    workers, scheduler
+        As for `iter_frames`.
+    keep_fields : bool
+        Write the complex fields too, as ``fields.zarr``.
+    progress : callable, optional
+        Called with (frames finished, frames in all).
+    draw : callable, optional
+        Makes the bytes of ``overview.png`` of the Analysis.
+
+    Returns
+    -------
+    RunSummary
+
+    Raises
+    ------
+    OutputError
+        If the folder cannot be written or holds another run.
+    SurveyError, RecipeError, StackError
+        If the input cannot be used. Nothing is written then.
+    """
+    began = time.perf_counter()
+    folder = Path(folder)
+    check_free(folder, existing)
+    planned = plan(stack, survey(stack, recipe))
+    job = Job(
+        fingerprint(stack.attrs["paths"]), recipe_text(planned.recipe), metadata.version("hologyre")
+    )
+    require_writable(folder)
+    store = enter(folder, job, existing)
+    surveyed = time.perf_counter()
+    status = _measure(planned, store, workers, scheduler, progress)
+    measured = time.perf_counter()
+    analysis = _collect(planned, store)
+    if not analysis.fields and status == "done":
+        store.remove()
+        with suppress(OSError):
+            folder.rmdir()
+        reason = analysis.frames["reason"].value_counts().index[0]
+        raise SurveyError(
+            f"{stack.attrs['name']}: none of its {len(analysis.frames)} frames could be used "
+            f"({reason}); check the recording and the recipe's carrier."
+        )
+    linked = time.perf_counter()
+    warnings = _warnings(planned, analysis, status)
+    files, moved = _write(folder, analysis, keep_fields, draw)
+    written = time.perf_counter()
+    seconds = {
+        "survey": surveyed - began,
+        "frames": measured - surveyed,
+        "motion": linked - measured,
+        "writing": written - linked,
+    }
+    summary = _summary(folder, analysis, status, (*warnings, *moved), files)
+    about = _about(summary, job, planned, seconds)
+    files["run.json"] = write_whole(folder / "run.json", about)
+    if status == "done":
+        store.remove()
+    return summary
+
+
+def _measure(
+    planned: Plan,
+    store: FrameStore,
+    workers: int,
+    scheduler: str | None,
+    progress: Progress | None,
+) -> Status:
+    """Measure and keep every frame that is not kept yet."""
+    kept = set(store.frames())
+    todo = [frame for frame in planned.all_frames if frame not in kept]
+    total, finished = len(planned.all_frames), len(planned.all_frames) - len(todo)
+    results = iter_frames(planned, frames=todo, workers=workers, scheduler=scheduler)
+    try:
+        if progress is not None:
+            progress(finished, total)
+        for result in results:
+            store.put(result)
+            finished += 1
+            if progress is not None:
+                progress(finished, total)
+    except KeyboardInterrupt:
+        return "interrupted"
+    finally:
+        if isinstance(results, Generator):
+            results.close()
+    return "done"
+
+
+def _collect(planned: Plan, store: FrameStore) -> Analysis:
+    """Link what is kept; a resumed run reads the same frames as one that was not stopped."""
+    tables: list[pd.DataFrame] = []
+    rows: list[dict[str, Any]] = []
+    done: list[int] = []
+    for frame in store.frames():
+        result = store.get(frame)
+        tables.append(result.singularities)
+        rows.append(result.row)
+        if result.status == "done":
+            done.append(frame)
+    singularities = join_singularities(tables)
+    motion = link(planned, singularities, done)
+    return Analysis(
+        planned.stack,
+        planned.recipe,
+        StoredFields(tuple(done), store),
+        singularities,
+        motion.trajectories,
+        motion.events,
+        frame_table(rows, motion),
+    )
+
+
+def _warnings(planned: Plan, analysis: Analysis, status: Status) -> tuple[str, ...]:
+    told = list(planned.stack.attrs.get("notes", ()))
+    frames = analysis.frames
+    skipped = frames[(frames["status"] == "skipped") & ~frames["frame"].isin(planned.left_out)]
+    for reason, group in skipped.groupby("reason", sort=False):
+        told.append(f"{_frames(group['frame'].tolist())} skipped: {reason}.")
+    odd = frames[~frames["audit"].isin(("", "ok"))]
+    if len(odd):
+        first = odd.iloc[0]
+        told.append(
+            f"{_frames(odd['frame'].tolist())}: charges do not add up (frame {first['frame']}: "
+            f"{first['audit']})."
+        )
+    if status == "interrupted":
+        told.append(
+            f"Interrupted after {len(frames)} of {len(planned.all_frames)} frames; go on by "
+            "--resume."
+        )
+    return tuple(told)
+
+
+def _frames(numbers: list[int]) -> str:
+    shown = ", ".join(map(str, numbers[:5]))
+    if len(numbers) == 1:
+        return f"Frame {shown}"
+    return f"Frames {shown}" + (f" and {len(numbers) - 5} more" if len(numbers) > 5 else "")
+
+
+def _write(
+    folder: Path, analysis: Analysis, keep_fields: bool, draw: Draw | None
+) -> tuple[dict[str, Path], list[str]]:
+    """Write all but run.json; tell where each file went and which had to be moved aside."""
+    contents: dict[str, bytes] = {
+        "recipe.toml": recipe_text(analysis.recipe).encode(),
+        "singularities.csv": csv_bytes(analysis.singularities, SINGULARITIES),
+        "trajectories.csv": csv_bytes(analysis.trajectories, TRAJECTORIES),
+        "events.csv": csv_bytes(analysis.events, EVENTS),
+        "frames.csv": csv_bytes(analysis.frames, FRAMES),
+    }
+    if draw is not None and analysis.fields:
+        contents["overview.png"] = draw(analysis)
+    files = {name: write_whole(folder / name, content) for name, content in contents.items()}
+    moved = [
+        f"{name} is open in another program; it was written as {path.name}."
+        for name, path in files.items()
+        if path.name != name
+    ]
+    if keep_fields and analysis.fields:
+        files["fields.zarr"] = write_fields(
+            folder / "fields.zarr", analysis.fields, analysis.measured
+        )
+    return files, moved
+
+
+def _summary(
+    folder: Path,
+    analysis: Analysis,
+    status: Status,
+    warnings: tuple[str, ...],
+    files: dict[str, Path],
+) -> RunSummary:
+    return RunSummary(
+        folder,
+        str(analysis.stack.attrs["name"]),
+        status,
+        len(analysis.frames),
+        len(analysis.fields),
+        len(analysis.frames) - len(analysis.fields),
+        len(analysis.singularities),
+        int(analysis.trajectories["track"].nunique()),
+        len(analysis.events),
+        warnings,
+        files,
+    )
+
+
+def _about(summary: RunSummary, job: Job, planned: Plan, seconds: dict[str, float]) -> bytes:
+    counts = ("frames", "done", "skipped", "singularities", "tracks", "events")
+    about = {
+        "status": summary.status,
+        "hologyre": job.version,
+        "versions": {
+            "python": platform.python_version(),
+            **{name: metadata.version(name) for name in _PACKAGES},
+        },
+        "platform": platform.platform(),
+        "input": {
+            "name": summary.name,
+            "paths": list(planned.stack.attrs["paths"]),
+            "checksum": job.checksum,
+            "shape": list(planned.stack.shape),
+            "dtype": str(planned.stack.dtype),
+        },
+        "counts": {name: getattr(summary, name) for name in counts},
+        "files": {name: path.name for name, path in summary.files.items()},
+        "seconds": {name: round(value, 3) for name, value in seconds.items()},
+        "warnings": list(summary.warnings),
+    }
+    return (json.dumps(about, indent=2, ensure_ascii=False) + "\n").encode()
