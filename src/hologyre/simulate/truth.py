@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+from collections.abc import Callable
 from dataclasses import dataclass
 from typing import NamedTuple
 
@@ -83,6 +84,7 @@ def true_tracks(
     *,
     frame_interval_s: float = 1.0,
     pixel_um: float | None = None,
+    progress: Callable[[float], None] | None = None,
 ) -> Truth:
     """Follow every zero of a wave through the frames 0 ... n_frames - 1.
 
@@ -103,6 +105,8 @@ def true_tracks(
         Time between frames, s. Events have times between frames.
     pixel_um : float, optional
         Size of a pixel in the object, um; None leaves lengths in um empty.
+    progress : callable, optional
+        Called with the part done, 0 to 1.
 
     Returns
     -------
@@ -118,10 +122,12 @@ def true_tracks(
     """
     if n_frames < 1:
         raise ValueError(f"n_frames: expected 1 or more, got {n_frames!r}")
-    zeros = [find_zeros(wave, window, float(frame)) for frame in range(n_frames)]
+    zeros = [find_zeros(wave, window, 0.0)]
     bridges: list[_Bridge] = []
     while len(bridges) < n_frames - 1:
         frame = len(bridges)
+        if len(zeros) == frame + 1:
+            zeros.append(find_zeros(wave, window, frame + 1.0))
         bridge = _bridge(wave, window, zeros[frame], zeros[frame + 1], frame)
         if bridge.missed_before:
             zeros[frame] = _with_missed(wave, window, zeros[frame], bridge.missed_before, frame)
@@ -133,6 +139,8 @@ def true_tracks(
             )
         else:
             bridges.append(bridge)
+        if progress is not None:
+            progress((len(bridges) + 1) / n_frames)
     truth = _assemble(zeros, bridges)
     check_conservation(truth, zeros)
     return Truth(

@@ -8,12 +8,16 @@ from scipy.ndimage import maximum_filter
 from scipy.spatial import cKDTree
 
 from hologyre.grid import Window
-from hologyre.simulate.wave import FloatArray, Wave
+from hologyre.simulate.wave import ComplexArray, FloatArray, Wave
 
 # Lattice cells per finest length at first; halved until two lattices agree.
 _CELLS = 10
 _REFINEMENTS = 4
 _NEWTON_STEPS = 60
+# Newton's first step from the lattice point next to a zero, in cells, at most; and the
+# 2 s1 s2 / (s1^2 + s2^2) of the slopes below which that step is not trusted.
+_REACH = 1.1
+_PARALLEL = 0.3
 # After this many steps starts that came this close together, in finest lengths, go on as one.
 _MERGE_AFTER = 4
 _MERGED = 1e-5
@@ -131,11 +135,17 @@ def _candidates(wave: Wave, window: Window, t: float, step: float) -> tuple[Floa
     y = np.arange(window.y_min - step, window.y_max + 2 * step, step)
     x = np.arange(window.x_min - step, window.x_max + 2 * step, step)
     value = wave.on_grid(y, x, t)
-    slope_y = np.abs(np.gradient(value, axis=0))
-    slope_x = np.abs(np.gradient(value, axis=1))
+    slope_y: ComplexArray = np.gradient(value, axis=0)
+    slope_x: ComplexArray = np.gradient(value, axis=1)
+    square = np.abs(slope_y) ** 2 + np.abs(slope_x) ** 2
     # The largest slope nearby bounds how far the modulus can fall within the cell.
-    slope = maximum_filter(np.hypot(slope_y, slope_x), size=3)
-    near = np.abs(value) <= 0.75 * slope
+    near = np.abs(value) <= 0.75 * np.sqrt(maximum_filter(square, size=3))
+    # Newton's first step says which lattice points are next to the zero, unless the slopes along
+    # both axes are nearly parallel and it cannot be trusted.
+    step_y, step_x, jacobian = solve_step(value, slope_y, slope_x)
+    near &= (np.maximum(np.abs(step_y), np.abs(step_x)) < _REACH) | (
+        2 * np.abs(jacobian) < _PARALLEL * square
+    )
     row, column = np.nonzero(near)
     return y[row], x[column]
 
@@ -173,7 +183,7 @@ def _newton(
 
 
 def solve_step(
-    value: np.ndarray, dy: np.ndarray, dx: np.ndarray
+    value: ComplexArray, dy: ComplexArray, dx: ComplexArray
 ) -> tuple[FloatArray, FloatArray, FloatArray]:
     """Return Newton's step (y, x) towards a zero and the Jacobian Re dx Im dy - Re dy Im dx."""
     jacobian = dx.real * dy.imag - dy.real * dx.imag
