@@ -4,6 +4,7 @@ from __future__ import annotations
 
 from hologyre.analyse.analysis import Analysis, LazyFields, analyse
 from hologyre.analyse.frame import FrameResult, field_of, measure
+from hologyre.analyse.inspection import Inspection, inspect
 from hologyre.analyse.iterate import iter_frames
 from hologyre.analyse.motion import frame_table, join_singularities, link
 from hologyre.analyse.planning import Plan, plan
@@ -11,11 +12,13 @@ from hologyre.analyse.planning import Plan, plan
 __all__ = [
     "Analysis",
     "FrameResult",
+    "Inspection",
     "LazyFields",
     "Plan",
     "analyse",
     "field_of",
     "frame_table",
+    "inspect",
     "iter_frames",
     "join_singularities",
     "link",

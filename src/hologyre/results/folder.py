@@ -8,6 +8,8 @@ import shutil
 from pathlib import Path
 from typing import Any, Literal
 
+import xarray as xr
+
 from hologyre.results.files import OutputError
 from hologyre.results.store import NAME, FrameStore, Job
 
@@ -17,9 +19,9 @@ FILES = (*TABLES, "recipe.toml", "overview.png", "fields.zarr", "run.json")
 Existing = Literal["refuse", "replace", "resume"]
 
 
-def default_folder(stack_path: str | Path, name: str) -> Path:
-    """Return the folder beside a stack that bears its name and ``.hologyre``."""
-    return Path(stack_path).absolute().parent / f"{name}.hologyre"
+def default_folder(stack: xr.DataArray) -> Path:
+    """Return the folder beside an opened stack that bears its name and ``.hologyre``."""
+    return Path(stack.attrs["home"]).with_name(f"{stack.attrs['name']}.hologyre")
 
 
 def read_run(folder: Path) -> dict[str, Any] | None:
@@ -81,10 +83,28 @@ def enter(folder: Path, job: Job, existing: Existing) -> FrameStore:
                 f"{job.version}; begin anew by --replace."
             )
         return store
+    if existing == "resume" and finished(folder, job) is None and read_run(folder) is not None:
+        raise OutputError(
+            f"{folder}: holds the finished results of other images or another recipe; write over "
+            "them by --replace or choose another folder by --out."
+        )
     # from here on the folder does not hold a finished run
     (folder / "run.json").unlink(missing_ok=True)
     shutil.rmtree(folder / "fields.zarr", ignore_errors=True)
     return FrameStore.begin(store.folder, job)
+
+
+def finished(folder: Path, job: Job) -> dict[str, Any] | None:
+    """Return the folder's run.json if it holds the finished results of this very job."""
+    run = read_run(folder)
+    if run is None or run["status"] != "done" or (folder / NAME).exists():
+        return None
+    try:
+        recipe = (folder / run["files"]["recipe.toml"]).read_text(encoding="utf-8")
+    except OSError:
+        return None
+    same = Job(run["input"]["checksum"], recipe, run["hologyre"]) == job
+    return run if same else None
 
 
 def _difference(before: str, now: str) -> str:

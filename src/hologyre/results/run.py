@@ -27,7 +27,7 @@ from hologyre.analyse import (
 from hologyre.recipe import Recipe, recipe_text
 from hologyre.results.fields import write_fields
 from hologyre.results.files import csv_bytes, require_writable, write_whole
-from hologyre.results.folder import Existing, check_free, enter
+from hologyre.results.folder import Existing, check_free, enter, finished
 from hologyre.results.store import FrameStore, Job, StoredFields
 from hologyre.stacks import fingerprint
 from hologyre.survey import SurveyError, survey
@@ -129,6 +129,9 @@ def run(
     job = Job(
         fingerprint(stack.attrs["paths"]), recipe_text(planned.recipe), metadata.version("hologyre")
     )
+    kept = finished(folder, job) if existing == "resume" else None
+    if kept is not None and (not keep_fields or "fields.zarr" in kept["files"]):
+        return _recall(folder, kept)
     require_writable(folder)
     store = enter(folder, job, existing)
     surveyed = time.perf_counter()
@@ -287,6 +290,16 @@ def _summary(
         len(analysis.events),
         warnings,
         files,
+    )
+
+
+def _recall(folder: Path, kept: dict[str, Any]) -> RunSummary:
+    """Return the summary of a run that was finished before."""
+    files = {name: folder / written for name, written in kept["files"].items()}
+    files["run.json"] = folder / "run.json"
+    name = kept["input"]["name"]
+    return RunSummary(
+        folder, name, "done", **kept["counts"], warnings=tuple(kept["warnings"]), files=files
     )
 
 

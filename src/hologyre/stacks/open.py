@@ -40,9 +40,9 @@ def open_stack(source: str | Path | Iterable[str | Path]) -> xr.DataArray:
     xarray.DataArray, dims ("t", "y", "x")
         Coordinate ``t`` holds frame numbers from 0. If there is no time axis, the z axis or
         the plain pages are taken for it. Attributes: ``name``, ``paths`` (tuple of str),
-        ``pixel_um`` (pixel size in object space as the file gives it, or None),
-        ``frame_interval_s`` (or None), ``bits`` (bits a pixel in the file), ``notes``
-        (remarks, tuple of str).
+        ``home`` (the file, or the folder of a sequence; str), ``pixel_um`` (pixel size in
+        object space as the file gives it, or None), ``frame_interval_s`` (or None), ``bits``
+        (bits a pixel in the file), ``notes`` (remarks, tuple of str).
 
     Raises
     ------
@@ -56,7 +56,10 @@ def open_stack(source: str | Path | Iterable[str | Path]) -> xr.DataArray:
         paths: tuple[Path, ...] = files
     else:
         frames, metadata, bits, paths = _join(files)
-    return _array(frames, metadata, _name(files), paths, bits)
+    home = _home(files)
+    stack = _array(frames, metadata, _name(home), paths, bits)
+    stack.attrs["home"] = str(home)
+    return stack
 
 
 def as_stack(holograms: ArrayLike | xr.DataArray, *, name: str = "holograms") -> xr.DataArray:
@@ -123,10 +126,13 @@ def _size(layout: TiffLayout) -> str:
     return f"{layout.frame_shape[0]}x{layout.frame_shape[1]}"
 
 
-def _name(files: tuple[Path, ...]) -> str:
-    single = files[0]
-    if len(files) > 1:
-        single = single.parent
+def _home(files: tuple[Path, ...]) -> Path:
+    """Return what stands for the stack among files: itself, or the folder of a sequence."""
+    return files[0].absolute() if len(files) == 1 else files[0].absolute().parent
+
+
+def _name(home: Path) -> str:
+    single = home
     for suffix in (".zarr", ".tif", ".tiff", ".btf", ".ome"):
         if single.name.lower().endswith(suffix):
             single = single.with_name(single.name[: -len(suffix)])

@@ -1,0 +1,26 @@
+"""What goes wrong for a reason the user can mend, and how it is told."""
+
+from __future__ import annotations
+
+import sys
+
+DONE, FAILED, UNUSABLE, INTERRUPTED = 0, 1, 2, 130
+
+
+class UsageFault(ValueError):
+    """Options that do not fit together or name what is not there."""
+
+
+def complain(sentence: str) -> None:
+    """Tell one sentence on stderr."""
+    sys.stderr.write(f"hologyre: {sentence}\n")
+
+
+def is_expected(error: ValueError) -> bool:
+    """Tell whether an error speaks of the input, the recipe or the output folder."""
+    from hologyre.recipe import RecipeError
+    from hologyre.results import OutputError
+    from hologyre.stacks import StackError
+    from hologyre.survey import SurveyError
+
+    return isinstance(error, UsageFault | RecipeError | OutputError | StackError | SurveyError)
