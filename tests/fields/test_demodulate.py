@@ -7,7 +7,7 @@ import pytest
 
 from hologyre.fields.blanks import Blanks
 from hologyre.fields.carrier import Carrier
-from hologyre.fields.demodulate import demodulate
+from hologyre.fields.demodulate import demodulate, reading_radius
 from hologyre.fields.interpolate import on_pixels
 
 N = 512
@@ -25,7 +25,7 @@ def round_trip(radius_bins: int, carrier_bins: tuple[int, int], precision: Any =
     y, x = np.mgrid[:N, :N]
     hologram = np.abs(1 + truth * np.exp(2j * np.pi * (fy * y + fx * x))) ** 2
     carrier = Carrier(fy, fx, radius_bins / N)
-    field = on_pixels(demodulate(hologram, carrier, precision=precision))
+    field = on_pixels(demodulate(hologram, carrier, edges="plain", precision=precision))
     return float(np.linalg.norm(field - truth) / np.linalg.norm(truth))
 
 
@@ -82,14 +82,81 @@ def hologram_of(field: np.ndarray, carrier: Carrier, offset: float = 0.0) -> np.
 CARRIER = Carrier(0.2013, 0.1801, 1 / 18)
 
 
-@pytest.mark.parametrize("edges", ["plain", "taper"])
-def test_the_field_is_in_counts_and_has_no_tilt_left(edges: Any) -> None:
+@pytest.mark.parametrize(("edges", "error"), [("plain", 0.03), ("taper", 0.02), ("fit", 0.002)])
+def test_the_field_is_in_counts_and_has_no_tilt_left(edges: Any, error: float) -> None:
     truth = plane_waves((200, 231))
     field = on_pixels(demodulate(hologram_of(truth, CARRIER), CARRIER, edges=edges))
     inner = (slice(60, -60), slice(60, -60))
-    error = field[inner] - 40 * truth[inner]
-    # Leakage of the edges; the counts and the tilt are far above it.
-    assert np.sqrt((np.abs(error) ** 2).mean()) < 0.04 * 40
+    off = field[inner] - 40 * truth[inner]
+    # Leakage of the edges, of which the fit has next to none (no noise here).
+    assert np.sqrt((np.abs(off) ** 2).mean()) < error * 40
+
+
+def test_the_fit_is_good_up_to_the_border() -> None:
+    truth = plane_waves((200, 231))
+    field = on_pixels(demodulate(hologram_of(truth, CARRIER), CARRIER))
+    error = np.abs(field - 40 * truth)[4:-4, 4:-4]
+    assert np.sqrt((error**2).mean()) < 0.01 * 40
+
+
+def test_the_fit_tells_the_zero_order_apart_in_the_tightest_geometry() -> None:
+    # Carrier just beyond three radii at 45 degrees, so that the bands' rectangles overlap.
+    truth = plane_waves((200, 231))
+    carrier = Carrier(0.1, 0.1, 1 / 23)
+    field = on_pixels(demodulate(hologram_of(truth, carrier), carrier))
+    error = np.abs(field - 40 * truth)[24:-24, 24:-24]
+    assert np.sqrt((error**2).mean()) < 0.01 * 40
+
+
+def test_band_and_full_sampling_agree_for_the_fit() -> None:
+    hologram = hologram_of(plane_waves((64, 81), 5), CARRIER)
+    fields = [
+        demodulate(hologram, CARRIER, sampling=s, precision="double") for s in ("band", "full")
+    ]
+    assert np.allclose(on_pixels(fields[0]), on_pixels(fields[1]), rtol=0, atol=1e-6 * 40)
+
+
+def test_masked_and_saturated_pixels_do_not_touch_the_fit() -> None:
+    truth = plane_waves((150, 160))
+    clean = hologram_of(truth, CARRIER)
+    rng = np.random.default_rng(4)
+    masked = rng.uniform(size=clean.shape) < 0.05
+    spoilt = np.where(masked, 1e6, clean)
+    field = demodulate(spoilt, CARRIER, valid=~masked)
+    error = np.abs(on_pixels(field) - 40 * truth)[8:-8, 8:-8]
+    assert np.sqrt((error**2).mean()) < 0.02 * 40
+    level = float(np.quantile(clean, 0.998))
+    clipped = np.minimum(clean, level)
+    field = demodulate(clipped, CARRIER)
+    error = np.abs(on_pixels(field) - 40 * truth)[8:-8, 8:-8]
+    assert np.sqrt((error**2).mean()) < 0.015 * 40
+    taken = demodulate(clipped, CARRIER, saturation=np.inf)
+    worse = np.abs(on_pixels(taken) - 40 * truth)[8:-8, 8:-8]
+    assert np.sqrt((worse**2).mean()) > 2 * np.sqrt((error**2).mean())
+
+
+def test_masked_pixels_may_hold_nan() -> None:
+    hologram = hologram_of(plane_waves((96, 96), 9), CARRIER)
+    valid = np.ones(hologram.shape, dtype=bool)
+    valid[40:43, 50] = False
+    expected = demodulate(hologram, CARRIER, valid=valid)
+    hologram[~valid] = np.nan
+    found = demodulate(hologram, CARRIER, valid=valid)
+    assert np.array_equal(found.values, expected.values)
+
+
+def test_a_frame_mostly_saturated_is_refused() -> None:
+    frame = np.full((64, 64), 255, dtype=np.uint8)
+    frame[:20] = 100
+    with pytest.raises(ValueError, match="only 31% of a frame's pixels are usable"):
+        demodulate(frame, CARRIER)
+
+
+def test_plain_reads_wider_only_where_there_is_room() -> None:
+    assert reading_radius(Carrier(0.25, 0.2, 0.04), (512, 512)) == pytest.approx(1.7 * 0.04)
+    touching = Carrier(0.15, 0.0, 0.05)
+    assert reading_radius(touching, (512, 512)) == touching.radius
+    assert reading_radius(Carrier(0.2, 0.44, 0.05), (512, 512)) == pytest.approx(0.06)
 
 
 def test_the_other_sideband_holds_the_conjugate() -> None:
@@ -125,7 +192,7 @@ def test_an_empty_frame_takes_the_aberration_out() -> None:
     truth = fade * np.exp(0.5j * fade)
     empty = hologram_of(fade * aberration, CARRIER)
     hologram = hologram_of(truth * aberration, CARRIER)
-    field = on_pixels(demodulate(hologram, CARRIER, blanks=Blanks(empty=empty)))
+    field = on_pixels(demodulate(hologram, CARRIER, edges="plain", blanks=Blanks(empty=empty)))
     inner = (slice(78, 178), slice(78, 178))
     phase = np.angle(field[inner] * np.exp(-0.5j * fade[inner]))
     assert np.ptp(phase) < 2e-3
@@ -138,16 +205,19 @@ def test_where_the_empty_frame_is_dark_the_field_stays_finite() -> None:
     field = demodulate(
         hologram_of(flat, CARRIER), CARRIER, blanks=Blanks(empty=hologram_of(hole, CARRIER))
     )
-    assert np.isfinite(field.values).all()
-    assert np.abs(field.values).max() < 25 * np.median(np.abs(field.values))
+    modulus = np.abs(on_pixels(field))
+    assert np.isfinite(modulus).all()
+    # Divided by no less than 0.05 of the median.
+    assert modulus.max() < 25 * np.median(modulus)
 
 
 @pytest.mark.parametrize(
     ("arguments", "message"),
     [
-        ({"edges": "none"}, "edges: expected one of plain, taper"),
+        ({"edges": "none"}, "edges: expected one of plain, taper, fit"),
         ({"sampling": "half"}, "sampling: expected one of band, full, got 'half'"),
         ({"window": "box"}, "window: expected one of disc, hann, got 'box'"),
+        ({"window": "hann"}, "window: edges='fit' takes 'disc', got 'hann'"),
         ({"precision": "half"}, "precision: expected one of single, double, got 'half'"),
         ({"blanks": Blanks(dark=np.zeros((3, 3)))}, r"blanks.dark: shape \(3, 3\) differs"),
     ],

@@ -29,12 +29,15 @@ class Band:
         Carrier (fy, fx), cycles/px.
     radius : float
         Radius of the disc, cycles/px.
+    most : (int, int), optional
+        Bins on either side of the centre are at most these.
     """
 
     frame_shape: tuple[int, int]
     period: tuple[int, int]
     carrier: tuple[float, float]
     radius: float
+    most: tuple[int, int] | None = None
 
     @property
     def centre(self) -> tuple[int, int]:
@@ -44,7 +47,11 @@ class Band:
     @property
     def half(self) -> tuple[int, int]:
         """Number of bins on either side of the centre."""
-        y, x = (min(int(self.radius * n + 0.5), (n - 1) // 2) for n in self.period)
+        most = self.most or self.period
+        y, x = (
+            min(int(self.radius * n + 0.5), (n - 1) // 2, m)
+            for n, m in zip(self.period, most, strict=True)
+        )
         return y, x
 
     @property

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+from collections.abc import Callable
 from typing import Any, Literal
 
 import numpy as np
@@ -10,25 +11,35 @@ from numpy.typing import ArrayLike, NDArray
 from hologyre.fields.bands import Band, FilterWindow, Sampling
 from hologyre.fields.blanks import Blanks
 from hologyre.fields.carrier import Carrier
-from hologyre.fields.interpolate import on_pixels
+from hologyre.fields.fit import fit_spectrum
+from hologyre.fields.fit_plan import make_plan
+from hologyre.fields.holes import fill_holes
+from hologyre.fields.saturation import usable_pixels
 from hologyre.fields.transform import band_spectrum
 from hologyre.grid import Field, Window
 
-Edges = Literal["plain", "taper"]
+Edges = Literal["plain", "taper", "fit"]
 Precision = Literal["single", "double"]
 
 _EMPTY_FLOOR = 0.05
 """An empty frame's field under this part of its median modulus is not divided by."""
+_FEWEST = 0.5
+"""Least fraction of the pixels that must be usable."""
+_WIDENING = 0.7
+"""How much wider than the sideband plain and taper read, where there is room."""
 
 
 def demodulate(
     holograms: ArrayLike,
     carrier: Carrier,
     *,
-    edges: Edges = "plain",
+    edges: Edges = "fit",
     sampling: Sampling = "band",
     window: FilterWindow = "disc",
+    reach: float | None = None,
     blanks: Blanks | None = None,
+    valid: NDArray[np.bool_] | None = None,
+    saturation: float | None = None,
     precision: Precision = "single",
 ) -> Field:
     """Read the complex field from the sideband of off-axis holograms.
@@ -39,22 +50,34 @@ def demodulate(
     Parameters
     ----------
     holograms : (y, x) or (t, y, x) real array
-        Frames; a frame that holds NaN or infinity is refused.
+        Frames; one that holds NaN or infinity where `valid` is True is refused.
     carrier : Carrier
         Sideband to read. It need not fall on a whole bin; what is over is kept as the
         field's tilt, so that zeros do not depend on it.
-    edges : "plain" or "taper"
+    edges : "plain", "taper" or "fit"
         How the frame's edges are met. "plain": the Fourier transform of the frame as it is,
         quickest, exact when the fringes are periodic in the frame, otherwise the edges leak
         into the picture. "taper": the frame's borders are faded out first, which confines
-        the leak to them; `valid` in the grid leaves them out.
+        the leak to them; `valid` in the grid leaves them out. "fit": least squares on the
+        frame's own pixels, which leaves no border to throw away.
     sampling : "band" or "full"
         Keep the samples the band needs, about 2 per shortest wavelength, or one per pixel.
+        With "fit" the field's period is longer than the frame.
     window : "disc" or "hann"
         Filter of the sideband: everything within the radius alike, or fading to its rim.
+        The fit takes a disc.
+    reach : float, optional
+        Radius that plain and taper read, cycles/px. Edges blur the sideband, so that by
+        default it is wider than the carrier's radius by 0.7, where the gap to the zero
+        order, its own conjugate and Nyquist leave room; see `reading_radius`.
     blanks : Blanks, optional
         Dark and reference frames are subtracted. The field of the empty frame is divided
-        out, its mean modulus kept, so that counts stay counts.
+        out, its median modulus kept, so that counts stay counts; sampling is then "full".
+    valid : (y, x) bool array, optional
+        False at dead or masked pixels.
+    saturation : float, optional
+        Counts at or above it are saturated; by default the level the frame shows; infinity
+        for none. Unusable pixels are replaced by what the fit to all others says there.
     precision : "single" or "double"
         complex64 or complex128 values.
 
@@ -66,72 +89,128 @@ def demodulate(
     Raises
     ------
     ValueError
-        If a frame holds NaN or infinity, shapes do not fit, or an option is unknown.
+        If a frame holds NaN or infinity, if more than half of its pixels are unusable, if
+        shapes do not fit, or if an option is unknown.
 
     References
     ----------
-    Takeda, Ina and Kobayashi, J. Opt. Soc. Am. 72, 156 (1982).
+    Takeda, Ina and Kobayashi, J. Opt. Soc. Am. 72, 156 (1982). For the fit's bases, Slepian,
+    Bell Syst. Tech. J. 57, 1371 (1978).
     """
     frames = _checked(holograms)
-    _one_of("edges", edges, ("plain", "taper"))
+    _one_of("edges", edges, ("plain", "taper", "fit"))
     _one_of("sampling", sampling, ("band", "full"))
     _one_of("window", window, ("disc", "hann"))
     _one_of("precision", precision, ("single", "double"))
-    real = np.float32 if precision == "single" else np.float64
+    if edges == "fit" and window != "disc":
+        raise ValueError(f"window: edges='fit' takes 'disc', got {window!r}")
     shape = (frames.shape[-2], frames.shape[-1])
-    subtrahend, empty = None, None
+    if valid is not None and np.shape(valid) != shape:
+        raise ValueError(f"valid: shape {np.shape(valid)} differs from the hologram's {shape}")
     if blanks is not None:
         blanks.check_shape(shape)
-        offset = blanks.subtrahend()
-        subtrahend = None if offset is None else offset.astype(real)
-        empty = blanks.empty
-    band = Band(shape, shape, (carrier.fy, carrier.fx), carrier.radius)
-    passed: NDArray[Any] = band.weights(window).astype(real)
-    taper = _taper(shape, carrier.radius, real) if edges == "taper" else None
+    real = np.float32 if precision == "single" else np.float64
+    offset = None if blanks is None else blanks.subtrahend()
+    subtrahend = None if offset is None else offset.astype(real)
+    at, inside = (carrier.fy, carrier.fx), None
+    read: Callable[[NDArray[Any]], NDArray[np.complexfloating]]
+    if edges == "fit":
+        plan = make_plan(shape, at, carrier.radius, precision)
+        band = plan.side
 
-    def read(frame: NDArray[Any]) -> NDArray[np.complexfloating]:
+        def read(counts: NDArray[Any]) -> NDArray[np.complexfloating]:
+            return fit_spectrum(counts, plan)
+
+    else:
+        band = Band(shape, shape, at, reading_radius(carrier, shape) if reach is None else reach)
+        passed: NDArray[Any] = band.weights(window).astype(real)
+        fades = _fades(shape, carrier.radius, real) if edges == "taper" else None
+        inside = None if fades is None else _inside(fades, shape)
+
+        def read(counts: NDArray[Any]) -> NDArray[np.complexfloating]:
+            if fades is not None:
+                counts = (counts - counts.mean()) * fades[0][:, None] * fades[1]
+            return band_spectrum(counts, band) * passed
+
+    def prepared(frame: NDArray[Any]) -> NDArray[Any]:
+        usable = usable_pixels(frame, valid, saturation)
         counts: NDArray[Any] = frame.astype(real)
-        if frame.dtype.kind == "f" and not np.isfinite(counts).all():
-            raise ValueError("holograms: a frame holds NaN or infinity")
         if subtrahend is not None:
             counts -= subtrahend
-        if taper is not None:
-            counts = (counts - counts.mean()) * taper[0][:, None] * taper[1]
-        return band_spectrum(counts, band) * passed
+        seen = counts if usable is None or frame.dtype.kind != "f" else counts[usable]
+        if frame.dtype.kind == "f" and not np.isfinite(seen).all():
+            raise ValueError("holograms: a frame holds NaN or infinity")
+        if usable is None:
+            return counts
+        share = float(usable.mean())
+        if share < _FEWEST:
+            msg = (
+                f"holograms: only {share:.0%} of a frame's pixels are usable, the rest is "
+                "masked or saturated"
+            )
+            raise ValueError(msg)
+        return fill_holes(counts, make_plan(shape, at, carrier.radius, precision), usable)
 
     if frames.ndim == 2:
-        spectrum = read(frames)
+        spectrum = read(prepared(frames))
     else:
-        spectrum = np.stack([read(frame) for frame in frames])
-    valid = None
-    if taper is not None:
-        margins = [float(np.argmax(fade >= 0.5)) for fade in taper]
-        ny, nx = shape
-        valid = Window(margins[0], ny - 1 - margins[0], margins[1], nx - 1 - margins[1])
-    if empty is None:
-        return band.field(spectrum, sampling, valid)
-    field = band.field(spectrum, "full", valid)
-    dark = 0.0 if blanks is None or blanks.dark is None else blanks.dark
-    blank = on_pixels(
-        demodulate(empty - dark, carrier, edges=edges, sampling="full", precision=precision)
+        spectrum = np.stack([read(prepared(frame)) for frame in frames])
+    if blanks is None or blanks.empty is None:
+        return _of_radius(band.field(spectrum, sampling, inside), carrier)
+    dark = None if blanks.dark is None else Blanks(dark=blanks.dark)
+    blank = demodulate(
+        blanks.empty,
+        carrier,
+        edges=edges,
+        sampling="full",
+        window=window,
+        reach=reach,
+        blanks=dark,
+        valid=valid,
+        precision=precision,
     )
-    return field.with_values(field.values * _inverse(blank))
+    field = _of_radius(band.field(spectrum, "full", inside), carrier)
+    return field.with_values(field.values * _inverse(blank.values, shape))
 
 
-def _inverse(blank: NDArray[np.complexfloating]) -> NDArray[np.complexfloating]:
+def reading_radius(carrier: Carrier, frame_shape: tuple[int, int]) -> float:
+    """Return the radius that plain and tapered demodulation read, cycles/px.
+
+    A frame's edges blur the sideband. It is read up to 0.7 wider than it is, but not into
+    the zero order (twice the sideband's radius), the conjugate sideband or beyond Nyquist,
+    and never narrower than it is.
+    """
+    apart = np.array([(2 * f + 0.5) % 1 - 0.5 for f in (carrier.fy, carrier.fx)])
+    step = 1 / min(frame_shape)
+    room = min(
+        carrier.frequency - 2 * carrier.radius - step,
+        float(np.hypot(*apart)) / 2,
+        0.5 - max(abs(carrier.fy), abs(carrier.fx)),
+    )
+    return float(max(carrier.radius, min((1 + _WIDENING) * carrier.radius, room)))
+
+
+def _of_radius(field: Field, carrier: Carrier) -> Field:
+    """Return the field with the sideband's radius, which is what its shortest wavelength is."""
+    return Field(field.values, field.grid, field.tilt_per_px, carrier.radius)
+
+
+def _inverse(
+    blank: NDArray[np.complexfloating], frame_shape: tuple[int, int]
+) -> NDArray[np.complexfloating]:
     """Return what divides a blank field out, its phase alone where it is too dark."""
     modulus = np.abs(blank)
-    typical = float(np.median(modulus))
+    typical = float(np.median(modulus[: frame_shape[0], : frame_shape[1]]))
     if typical == 0:
         raise ValueError("blanks.empty: there are no fringes in it at this carrier")
     phase = np.conj(blank) / np.where(modulus > 0, modulus, 1)
-    inverse: NDArray[np.complexfloating] = phase * np.where(
-        modulus > _EMPTY_FLOOR * typical, typical / np.maximum(modulus, 1e-30), 1
-    )
-    return inverse.astype(blank.dtype)
+    bright = modulus > _EMPTY_FLOOR * typical
+    factor = np.where(bright, typical / np.where(bright, modulus, 1), 1)
+    inverse: NDArray[np.complexfloating] = (phase * factor).astype(blank.dtype)
+    return inverse
 
 
-def _taper(
+def _fades(
     shape: tuple[int, int], radius: float, real: type[np.floating]
 ) -> tuple[NDArray[np.floating], NDArray[np.floating]]:
     """Fade a frame's borders out over one shortest wavelength, by cosines."""
@@ -141,6 +220,14 @@ def _taper(
         depth = (np.minimum(np.arange(n), np.arange(n)[::-1]) + 0.5) / width
         fades.append((0.5 - 0.5 * np.cos(np.pi * np.minimum(depth, 1))).astype(real))
     return fades[0], fades[1]
+
+
+def _inside(
+    fades: tuple[NDArray[np.floating], NDArray[np.floating]], shape: tuple[int, int]
+) -> Window:
+    """Return the window where a taper takes less than half away."""
+    top, left = (float(np.argmax(fade >= 0.5)) for fade in fades)
+    return Window(top, shape[0] - 1 - top, left, shape[1] - 1 - left)
 
 
 def _checked(holograms: ArrayLike) -> NDArray[Any]:
