@@ -160,13 +160,21 @@ class CarrierSettings(_Section):
 class FieldSettings(_Section):
     """How complex fields are read from holograms."""
 
-    edges: Literal["plain", "taper"] = Field(
-        default="plain", description="how the ends of the frame are met: plain, taper"
+    edges: Literal["plain", "taper", "fit"] = Field(
+        default="fit",
+        description="how the ends of the frame are met: fit (to the frame's own pixels, best), "
+        "taper, plain (quickest)",
     )
     window: Literal["disc", "hann"] = Field(default="disc", description="filter on the sideband")
     precision: Literal["single", "double"] = Field(
         default="single", description="of the field's numbers"
     )
+
+    @model_validator(mode="after")
+    def _fit_takes_disc(self) -> FieldSettings:
+        if self.edges == "fit" and self.window != "disc":
+            raise ValueError('edges "fit" takes the window "disc"')
+        return self
 
 
 class RefocusSettings(_Section):
@@ -194,10 +202,10 @@ class SingularitySettings(_Section):
 class MotionSettings(_Section):
     """Linking singularities from frame to frame."""
 
-    method: Auto | Literal["threads", "positions"] = Field(
-        default="auto",
-        description="threads: follow the lines of zeros between frames; positions: assignment, for "
-        "coarse time steps",
+    method: Literal["mixed", "threads", "assignment"] = Field(
+        default="mixed",
+        description="threads: follow the lines of zeros between frames; assignment: by position "
+        "alone; mixed: threads wherever the frames are close enough in time",
     )
     max_step_px: Auto | Positive = Field(
         default="auto", description="longest step between two frames, px"

@@ -24,6 +24,7 @@ _SAMPLED = 5
 _FOLLOWED = 4
 # with more of its pixels at the top a frame says too little about the field
 _MOST_SATURATED = 0.2
+_MOST_MISSING = 0.1
 
 
 class SurveyError(ValueError):
@@ -124,12 +125,28 @@ def read_counts(stack: xr.DataArray, frame: int, recipe: Recipe) -> NDArray[Any]
     return np.asarray(lazy.compute(scheduler="synchronous"))
 
 
+def finite_pixels(counts: NDArray[Any]) -> NDArray[np.bool_] | None:
+    """Return True where a frame holds a number, or None when it does everywhere."""
+    if counts.dtype.kind != "f":
+        return None
+    finite: NDArray[np.bool_] = np.isfinite(counts)
+    return None if finite.all() else finite
+
+
+def without_gaps(counts: NDArray[Any]) -> NDArray[Any]:
+    """Return the frame with its median in place of what is not a number."""
+    finite = finite_pixels(counts)
+    return counts if finite is None else np.where(finite, counts, np.median(counts[finite]))
+
+
 def frame_fault(counts: NDArray[Any], saturation: float | None) -> FrameFault:
     """Tell whether a frame is plainly unusable: NaN, constant, or too much of it saturated."""
-    if counts.dtype.kind == "f":
-        bad = counts.size - int(np.count_nonzero(np.isfinite(counts)))
-        if bad:
+    finite = finite_pixels(counts)
+    if finite is not None:
+        bad = counts.size - int(np.count_nonzero(finite))
+        if bad > _MOST_MISSING * counts.size:
             return FrameFault(f"{bad} of {counts.size} pixels are NaN or infinite")
+        counts = counts[finite]
     if counts.min() == counts.max():
         return FrameFault(f"all pixels have the same value, {counts.flat[0]}")
     if saturation is not None:
@@ -218,7 +235,7 @@ def _carrier_settings(
     found: list[Carrier] = []
     why: list[str] = []
     for frame, counts in samples:
-        carrier = find_carrier(counts, radius=radius, conjugate=given.conjugate)
+        carrier = find_carrier(without_gaps(counts), radius=radius, conjugate=given.conjugate)
         if isinstance(carrier, NoFringes):
             why.append(f"frame {frame}: {carrier.reason}")
         else:
@@ -239,10 +256,11 @@ def _carrier_settings(
     }
 
 
-def _motion_settings(recipe: Recipe, stack: xr.DataArray, frames: Sequence[int]) -> dict[str, Any]:
+def _motion_settings(
+    recipe: Recipe, stack: xr.DataArray, frames: Sequence[int]
+) -> dict[str, float]:
     """Measure how far singularities move from one frame to the next."""
-    given = recipe.motion
-    if "auto" not in (given.method, given.max_step_px):
+    if recipe.motion.max_step_px != "auto":
         return {}
     carrier, shape = carrier_of(recipe), (0, 0)
     tables: list[pd.DataFrame] = []
@@ -250,14 +268,10 @@ def _motion_settings(recipe: Recipe, stack: xr.DataArray, frames: Sequence[int])
     for frame in frames[middle : middle + _FOLLOWED]:
         counts = read_counts(stack, frame, recipe)
         if not frame_fault(counts, saturation_of(recipe)):
-            field = demodulate(counts, carrier)
+            field = demodulate(counts, carrier, valid=finite_pixels(counts))
             shape = field.grid.frame_shape
             tables.append(locate_singularities(field).assign(frame=frame))
-    step = 1 / carrier.radius
-    if len(tables) > 1:
-        table = checked(pd.concat(tables, ignore_index=True))
-        step = step_law(table, border_of(table, shape, 0.0), "auto")[1]
-    return {
-        "motion.method": "positions" if given.method == "auto" else given.method,
-        "motion.max_step_px": step if given.max_step_px == "auto" else given.max_step_px,
-    }
+    if len(tables) < 2:
+        return {"motion.max_step_px": 1 / carrier.radius}
+    table = checked(pd.concat(tables, ignore_index=True))
+    return {"motion.max_step_px": step_law(table, border_of(table, shape, 0.0), "auto")[1]}

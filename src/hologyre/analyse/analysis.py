@@ -153,11 +153,12 @@ def analyse(
             progress(len(results), len(planned.all_frames))
     done = tuple(result.frame for result in results if result.status == "done")
     singularities = join_singularities(result.singularities for result in results)
-    motion = link(planned, singularities, done)
+    fields = LazyFields(done, planned)
+    motion = link(planned, singularities, fields, done)
     return Analysis(
         stack,
         planned.recipe,
-        LazyFields(done, planned),
+        fields,
         singularities,
         motion.trajectories,
         motion.events,

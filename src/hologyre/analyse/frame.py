@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import math
 from dataclasses import dataclass, replace
 from typing import Any, Literal
 
@@ -17,7 +18,13 @@ from hologyre.fields.noise import field_noise
 from hologyre.grid import Field, Window
 from hologyre.singularities.locate import locate_singularities
 from hologyre.stacks import StackError
-from hologyre.survey import frame_fault, read_counts, saturation_of
+from hologyre.survey import (
+    finite_pixels,
+    frame_fault,
+    read_counts,
+    saturation_of,
+    without_gaps,
+)
 from hologyre.tables import SINGULARITIES, conform, empty
 
 # band power over noise power, and visibility, under which a frame is asked whether it has fringes
@@ -69,15 +76,21 @@ def measure(plan: Plan, frame: int) -> FrameResult:
     field = _field(plan, counts)
     settings = plan.recipe.field
     noise = field_noise(
-        counts, plan.carrier, edges=settings.edges, window=settings.window, blanks=plan.blanks
+        without_gaps(counts),
+        plan.carrier,
+        edges="plain" if settings.edges == "fit" else settings.edges,
+        window=settings.window,
+        blanks=plan.blanks,
+        valid=finite_pixels(counts),
+        saturation=_level(plan),
     )
     power = float(np.mean(np.abs(field.values) ** 2, dtype=np.float64))
     known["noise"] = noise.rms
-    known["visibility"] = 2 * power**0.5 / float(np.mean(counts, dtype=np.float64))
+    known["visibility"] = 2 * power**0.5 / float(np.nanmean(counts, dtype=np.float64))
     if power < _FAINT_POWER * noise.rms**2:
         return _skipped(plan, frame, "no fringes: the sideband is no stronger than noise", known)
     if known["visibility"] < _FAINT_VISIBILITY:
-        found = find_carrier(counts, radius=plan.carrier.radius)
+        found = find_carrier(without_gaps(counts), radius=plan.carrier.radius)
         if isinstance(found, NoFringes):
             return _skipped(plan, frame, f"no fringes: {found.reason}", known)
     table = locate_singularities(field, noise=noise, margin_px=plan.recipe.singularities.margin_px)
@@ -109,7 +122,15 @@ def _field(plan: Plan, counts: NDArray[Any]) -> Field:
         window=settings.window,
         precision=settings.precision,
         blanks=plan.blanks,
+        valid=finite_pixels(counts),
+        saturation=_level(plan),
     )
+
+
+def _level(plan: Plan) -> float:
+    """Return the count at which pixels are saturated, infinite when there is none."""
+    level = saturation_of(plan.recipe)
+    return math.inf if level is None else level
 
 
 def border_winding(field: Field, margin_px: float = 0.0) -> int:

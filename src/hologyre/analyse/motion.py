@@ -2,13 +2,14 @@
 
 from __future__ import annotations
 
-from collections.abc import Iterable, Mapping
+from collections.abc import Iterable, Mapping, Sequence
 from typing import Any
 
 import pandas as pd
 
 from hologyre.analyse.planning import Plan
-from hologyre.motion import Motion, link_singularities
+from hologyre.grid import Field
+from hologyre.motion import Motion, follow_threads, link_singularities
 from hologyre.tables import EVENTS, FRAMES, SINGULARITIES, TRAJECTORIES, conform, empty
 
 
@@ -22,22 +23,45 @@ def join_singularities(tables: Iterable[pd.DataFrame]) -> pd.DataFrame:
     return conform(joined, SINGULARITIES)
 
 
-def link(plan: Plan, singularities: pd.DataFrame, done: Iterable[int]) -> Motion:
-    """Link the singularities of the frames that were measured."""
-    searched = sorted(done)
-    if len(searched) < 2:
+def link(
+    plan: Plan, singularities: pd.DataFrame, fields: Iterable[Field], measured: Sequence[int]
+) -> Motion:
+    """Link the singularities of the frames that were measured.
+
+    Parameters
+    ----------
+    plan : Plan
+        What was asked for.
+    singularities : DataFrame
+        Of all frames.
+    fields : iterable of Field
+        The measured frames' fields, taken one after another.
+    measured : sequence of int
+        Their frame numbers, increasing.
+    """
+    if len(measured) < 2:
         return Motion(empty(TRAJECTORIES), empty(EVENTS))
     settings = plan.recipe.motion
-    if settings.max_step_px == "auto":
-        raise ValueError('motion.max_step_px: still "auto"')
-    motion = link_singularities(
-        singularities,
-        max_step_px=settings.max_step_px,
-        max_gap=settings.max_gap,
-        frame_shape=plan.frame_shape,
-        margin_px=plan.recipe.singularities.margin_px,
-        frames=searched,
-    )
+    margin_px = plan.recipe.singularities.margin_px
+    if settings.method == "assignment" and plan.recipe.stack.region is None:
+        motion = link_singularities(
+            singularities,
+            max_step_px=settings.max_step_px,
+            max_gap=settings.max_gap,
+            frame_shape=plan.frame_shape,
+            margin_px=margin_px,
+            frames=measured,
+        )
+    else:
+        motion = follow_threads(
+            fields,
+            singularities,
+            frames=measured,
+            method="auto" if settings.method == "mixed" else settings.method,
+            max_step_px=settings.max_step_px,
+            max_gap=settings.max_gap,
+            margin_px=margin_px,
+        )
     return Motion(motion.trajectories, _located(plan, motion.events))
 
 

@@ -205,11 +205,12 @@ def _collect(planned: Plan, store: FrameStore) -> Analysis:
         if result.status == "done":
             done.append(frame)
     singularities = join_singularities(tables)
-    motion = link(planned, singularities, done)
+    fields = StoredFields(tuple(done), store)
+    motion = link(planned, singularities, fields, done)
     return Analysis(
         planned.stack,
         planned.recipe,
-        StoredFields(tuple(done), store),
+        fields,
         singularities,
         motion.trajectories,
         motion.events,
