@@ -9,14 +9,15 @@ from numpy.typing import NDArray
 
 _FULL_SCALES = tuple(2**bits - 1 for bits in (8, 10, 12, 14, 16))
 _FEWEST = 3
+_CROWDED = 5
 
 
 def saturation_level(frame: NDArray[Any]) -> float | None:
     """Return the count at which a frame saturates, or None if it does not seem to.
 
-    For integers it is the largest count when that is the full scale of an 8, 10, 12, 14 or
-    16-bit camera; otherwise when that count is crowded: a camera that clips below full scale
-    piles up there what should have lain above, more than in the counts just under it.
+    It is the largest count, when that is the full scale of an 8, 10, 12, 14 or 16-bit
+    camera, or when it is crowded: a camera that clips below full scale piles up there what
+    should have lain above, more than there is in any count just under it.
     """
     top = frame.max()
     at_top = int(np.count_nonzero(frame == top))
@@ -24,9 +25,11 @@ def saturation_level(frame: NDArray[Any]) -> float | None:
         return float(top)
     if at_top < _FEWEST or at_top == frame.size:
         return None
-    spread = float(np.std(frame, dtype=np.float64))
-    nearby = int(np.count_nonzero(frame > top - 0.1 * spread)) - at_top
-    return float(top) if at_top > max(4 * nearby, _FEWEST) else None
+    depth = max(0.1 * float(np.std(frame, dtype=np.float64)), 1.0)
+    nearby = int(np.count_nonzero(frame > top - depth)) - at_top
+    # Counts that are no whole numbers hardly ever meet twice.
+    expected = nearby / depth if float(top).is_integer() else 0.0
+    return float(top) if at_top > _FEWEST + _CROWDED * expected else None
 
 
 def usable_pixels(
