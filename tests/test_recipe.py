@@ -38,7 +38,6 @@ def test_default_recipe_leaves_to_the_survey_what_only_a_stack_can_tell() -> Non
         "carrier.fy",
         "carrier.fx",
         "carrier.radius",
-        "motion.method",
         "motion.max_step_px",
     }
 
@@ -99,7 +98,7 @@ def test_changed_recipe_is_a_new_value() -> None:
         ({"motion": {"max_gap": 1.5}}, "motion.max_gap: expected a whole number from 0, got 1.5"),
         (
             {"motion": {"method": "magic"}},
-            'motion.method: expected "auto" or "threads" or "positions", got \'magic\'',
+            'motion.method: expected "mixed" or "threads" or "assignment", got \'magic\'',
         ),
     ],
 )
