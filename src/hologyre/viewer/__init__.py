@@ -1,0 +1,1 @@
+"""Hologram time-lapses in napari: sessions, layers and docks."""

@@ -1,0 +1,95 @@
+"""The Singularities dock: find them in every frame, and what the current frame has."""
+
+from __future__ import annotations
+
+from typing import Any
+
+from napari import Viewer
+from qtpy.QtWidgets import QLabel
+
+from hologyre.viewer import steps
+from hologyre.viewer.docks.base import SessionDock, export_button
+from hologyre.viewer.forms import RecipeForm, section_paths
+from hologyre.viewer.session import Session
+from hologyre.viewer.styles import NEGATIVE, POSITIVE
+
+_LABELS = {"singularities.margin_px": "Keep off the border"}
+
+
+class SingularitiesDock(SessionDock):
+    """The zeros of the field, where the phase turns."""
+
+    title = "Singularities"
+    help_text = (
+        f"<span style='color:{POSITIVE}'>▲</span> charge +1: the phase grows clockwise on the "
+        f"screen. <span style='color:{NEGATIVE}'>▼</span> charge −1."
+    )
+    action = "Find singularities"
+    action_tip = "Find the singularities of every frame, to a part of a pixel."
+
+    def __init__(self, napari_viewer: Viewer) -> None:
+        self._form = RecipeForm(section_paths("singularities"), labels=_LABELS)
+        self._told = QLabel()
+        self._told.setWordWrap(True)
+        super().__init__(napari_viewer)
+
+    def show_session(self, session: Session) -> None:
+        """Show the settings and the counts."""
+        self._form.show_recipe(session.recipe)
+        self._export.setEnabled(len(session.tables.singularities) > 0)
+        self._tell()
+
+    def run(self, session: Session) -> None:
+        """Find the singularities of all frames."""
+        steps.find_singularities(session)
+
+    def _lay_out(self) -> None:
+        self._export = export_button(self, "singularities")
+        self.rows.addWidget(self._form)
+        self.rows.addWidget(self._told)
+        self.rows.addStretch(1)
+        self._form.changed.connect(self.set_recipe)
+        self._form.refused.connect(lambda reason: self.say(reason, warning=True))
+        super()._lay_out()
+        self.footer.addWidget(self._export)
+
+    def _attach(self) -> None:
+        self.viewer.dims.events.current_step.connect(self._tell)
+        super()._attach()
+
+    def _release(self) -> None:
+        self.viewer.dims.events.current_step.disconnect(self._tell)
+        super()._release()
+
+    def _tell(self, event: Any = None) -> None:
+        session = self.session()
+        if session is None or session.display is None:
+            self._told.setText("")
+            return
+        self._told.setText("\n".join(_sentences(session, session.display.frame)))
+
+
+def _sentences(session: Session, frame: int) -> list[str]:
+    tables = session.tables
+    if tables.found_with is None:
+        return ["Not searched yet."]
+    told = []
+    if not steps.singularities_are_current(session):
+        told.append("Settings have changed since these were found; find them again.")
+    row = tables.frames[tables.frames["frame"] == frame]
+    if not len(row):
+        told.append(f"Frame {frame} was not searched.")
+    elif row["status"].iloc[0] == "skipped":
+        told.append(f"Frame {frame} is not used: {row['reason'].iloc[0]}.")
+    else:
+        plus, minus = int(row["positive"].iloc[0]), int(row["negative"].iloc[0])
+        told.append(
+            f"Frame {frame}: {plus} positive, {minus} negative; the phase turns "
+            f"{int(row['border_winding'].iloc[0]):+d} times along the border."
+        )
+    done = tables.frames["status"] == "done"
+    told.append(
+        f"In all {len(tables.singularities)} in {int(done.sum())} frames"
+        + (f"; {int((~done).sum())} frames not used." if (~done).any() else ".")
+    )
+    return told

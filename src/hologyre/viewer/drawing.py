@@ -1,0 +1,79 @@
+"""What each layer of a session is given: data and the options that go with them."""
+
+from __future__ import annotations
+
+from typing import Any
+
+import numpy as np
+from numpy.typing import NDArray
+
+from hologyre.recipe import Recipe
+from hologyre.viewer.frames import lazy_frames
+from hologyre.viewer.layers import (
+    points_from_events,
+    points_from_singularities,
+    tracks_from_trajectories,
+    vectors_from_wavevector,
+)
+from hologyre.viewer.maps import Skipped
+from hologyre.viewer.session import Session
+from hologyre.viewer.styles import Role, charge_colours, charge_symbols, event_symbols
+
+
+def picture(session: Session, recipe: Recipe, role: Role) -> Any:
+    """Return the lazy (t, y, x) array of a quantity."""
+    maps = session.maps
+    quantity = {"amplitude": maps.amplitude, "phase": maps.phase, "unwrapped": maps.unwrapped}[role]
+    return lazy_frames(lambda t: quantity(recipe, t), maps.shape, np.float32)
+
+
+def contrast(session: Session, recipe: Recipe, role: Role, frame: int) -> dict[str, Any]:
+    """Return the contrast limits a picture starts with, from one of its frames."""
+    if role == "phase":
+        return {}
+    values = np.asarray(picture(session, recipe, role)[frame])
+    values = values[np.isfinite(values)]
+    if not len(values):
+        return {"contrast_limits": (0.0, 1.0)}
+    low, high = np.percentile(values, [0.0, 99.7] if role == "amplitude" else [0.0, 100.0])
+    return {"contrast_limits": (float(low), float(max(high, low + 1e-6)))}
+
+
+def table(session: Session, role: Role) -> tuple[NDArray[np.float64], dict[str, Any]]:
+    """Return data and options of a layer made of a table."""
+    tables = session.tables
+    if role == "singularities":
+        data, features = points_from_singularities(tables.singularities)
+        return data, {
+            "features": features,
+            "face_color": charge_colours(features["charge"]),
+            "symbol": charge_symbols(features["charge"]),
+        }
+    if role == "events":
+        data, features = points_from_events(tables.events)
+        return data, {"features": features, "symbol": event_symbols(features["kind"])}
+    data, features, graph = tracks_from_trajectories(tables.trajectories, tables.events)
+    return data, {"features": _numbers(features), "graph": graph, "color_by": "charge"}
+
+
+def cuts(session: Session, recipe: Recipe, frame: int) -> list[NDArray[np.float64]] | None:
+    """Return the cuts of a frame as paths, None if they are not computed yet."""
+    found = session.maps.ready("cuts", recipe, frame)
+    if found is None:
+        return None
+    return [] if isinstance(found, Skipped) else found.cuts.polylines
+
+
+def arrows(session: Session, recipe: Recipe, frame: int) -> NDArray[np.float64] | None:
+    """Return the wavevectors of a frame as arrows, None if they are not computed yet."""
+    found = session.maps.ready("wavevectors", recipe, frame)
+    if found is None:
+        return None
+    if isinstance(found, Skipped):
+        return np.empty((0, 2, 2))
+    return vectors_from_wavevector(found)
+
+
+def _numbers(features: Any) -> Any:
+    """Keep the numeric columns, the only ones tracks can be coloured by."""
+    return features.select_dtypes("number")

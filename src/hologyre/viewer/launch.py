@@ -1,0 +1,99 @@
+"""Ways in: all docks at once, and a viewer with a stack and its result."""
+
+from __future__ import annotations
+
+from collections.abc import Sequence
+from pathlib import Path
+
+import napari
+from napari import Viewer
+from qtpy.QtCore import Qt
+from qtpy.QtWidgets import QTabBar
+
+from hologyre.recipe import Recipe
+from hologyre.results import load_result
+from hologyre.viewer.opening import show_stack
+from hologyre.viewer.session import Session, Tables
+
+PLUGIN = "hologyre"
+DOCKS = ("Stack", "Field", "Phase", "Singularities", "Motion")
+OVERVIEW = "All docks"
+
+
+def open_docks(viewer: Viewer | None = None) -> None:
+    """Open the overview and the docks of all steps, tabbed together in the order of the work."""
+    viewer = viewer or napari.current_viewer()
+    if viewer is None:
+        raise RuntimeError("no napari viewer is open")
+    for name in (OVERVIEW, *DOCKS):
+        viewer.window.add_plugin_dock_widget(PLUGIN, name, tabify=True)
+    raise_dock(viewer, OVERVIEW)
+    _fit_tabs(viewer)
+
+
+def raise_dock(viewer: Viewer, name: str) -> None:
+    """Bring a dock to the front, opening it if need be."""
+    dock, _ = viewer.window.add_plugin_dock_widget(PLUGIN, name, tabify=True)
+    dock.show()
+    dock.raise_()
+
+
+def view(
+    source: str | Path | Sequence[str | Path],
+    *,
+    result: str | Path | None = None,
+    recipe: Recipe | None = None,
+) -> Viewer:
+    """Open napari with a stack, all docks and, if there is one, the result of a run.
+
+    Start napari's event loop with ``napari.run()`` to use it.
+
+    Parameters
+    ----------
+    source : path, pattern, folder or list of paths
+        Holograms, as for `hologyre.open_stack`.
+    result : path, optional
+        Folder that ``hologyre run`` wrote for this stack.
+    recipe : Recipe, optional
+        Settings to begin with; those of the result are taken if there is one.
+
+    Raises
+    ------
+    StackError
+        If the images cannot be used.
+    OutputError
+        If the folder holds no result.
+    """
+    loaded = None if result is None else load_result(result)
+    viewer = Viewer(title=PLUGIN)
+    session = show_stack(viewer, source, recipe=recipe if loaded is None else loaded.recipe)
+    open_docks(viewer)
+    if loaded is not None:
+        show_tables(
+            session,
+            Tables(
+                singularities=loaded.singularities,
+                frames=loaded.frames,
+                trajectories=loaded.trajectories,
+                events=loaded.events,
+                found_with=loaded.recipe,
+                linked_with=loaded.recipe,
+            ),
+        )
+    return viewer
+
+
+def show_tables(session: Session, tables: Tables) -> None:
+    """Give a session tables found earlier, and show them."""
+    session.tables = tables
+    if session.display is not None:
+        session.display.show("phase", "singularities", "tracks")
+
+def _fit_tabs(viewer: Viewer) -> None:
+    """Give the tabs of the docks room for their whole titles."""
+    dock, _ = viewer.window.add_plugin_dock_widget(PLUGIN, OVERVIEW, tabify=True)
+    for bar in dock.window().findChildren(QTabBar):
+        titles = {bar.tabText(i) for i in range(bar.count())}
+        if {*DOCKS} <= titles:
+            bar.setElideMode(Qt.TextElideMode.ElideNone)
+            bar.setStyleSheet("QTabBar::tab { padding: 4px 4px; min-width: 0px; font-size: 11px; }")

@@ -1,0 +1,196 @@
+"""What layers show of a frame: field, amplitude, phase, cuts, wavevector, each computed once."""
+
+from __future__ import annotations
+
+from collections.abc import Callable, Hashable
+from dataclasses import dataclass
+from typing import Any
+
+import numpy as np
+import xarray as xr
+from numpy.typing import NDArray
+
+from hologyre.analyse import FrameResult, Plan, field_of, plan
+from hologyre.fields.carrier import Carrier, find_carrier
+from hologyre.fields.interpolate import on_pixels
+from hologyre.fields.wavevector import local_wavevector
+from hologyre.grid import Field, Window
+from hologyre.phase.unwrap import Unwrapped, unwrap
+from hologyre.recipe import Recipe
+from hologyre.viewer.frames import FrameCache
+from hologyre.viewer.spectrum import spectrum_picture
+
+
+@dataclass(frozen=True)
+class Skipped:
+    """Why a frame has nothing to show; false."""
+
+    reason: str
+
+    def __bool__(self) -> bool:
+        return False
+
+
+class FrameMaps:
+    """Quantities of single frames of a stack, for any recipe, kept in one cache.
+
+    Every method may be called from any thread. Pictures are on the hologram's pixels; a frame
+    that cannot be used, and pixels outside the region, are NaN.
+
+    Parameters
+    ----------
+    stack : DataArray
+        Holograms (t, y, x).
+    """
+
+    def __init__(self, stack: xr.DataArray) -> None:
+        self._stack = stack
+        self._cache = FrameCache()
+
+    @property
+    def shape(self) -> tuple[int, int, int]:
+        """Frames, rows and columns."""
+        return self._stack.sizes["t"], self._stack.sizes["y"], self._stack.sizes["x"]
+
+    def key(self, quantity: str, recipe: Recipe) -> Hashable:
+        """Return what a quantity depends on: recipes alike in it give the same."""
+        if quantity == "spectrum":
+            return ()
+        stack = recipe.stack.model_copy(update={"notes": "", "frames": ":", "left_out": ()})
+        settings = (stack, recipe.carrier, recipe.field, recipe.refocus, recipe.optics)
+        return (*settings, recipe.phase) if quantity in ("unwrapped", "cuts") else settings
+
+    def hologram(self, frame: int) -> NDArray[Any]:
+        """Return the counts of a frame."""
+        return np.asarray(self._stack.data[frame])
+
+    def spectrum(self, recipe: Recipe, frame: int) -> NDArray[np.uint8]:
+        """Return the picture of a frame's spectrum, which does not depend on the recipe."""
+        return self._get("spectrum", recipe, frame, lambda _, t: spectrum_picture(self.hologram(t)))
+
+    def carrier(self, recipe: Recipe, frame: int) -> Carrier | Skipped:
+        """Return the carrier found in one frame."""
+        return self._get("carrier", recipe, frame, self._find_carrier)
+
+    def plan(self, recipe: Recipe) -> Plan:
+        """Return what all frames of an analysis share."""
+        return self._cache.get(("plan", recipe), lambda: plan(self._stack, recipe))
+
+    def keep(self, recipe: Recipe, result: FrameResult) -> None:
+        """Keep the field of a frame that was analysed, so that it is not read again."""
+        if result.field is not None:
+            self._cache.put(("field", self.key("field", recipe), result.frame), result.field)
+
+    def field(self, recipe: Recipe, frame: int) -> Field | Skipped:
+        """Return the complex field of a frame, on its band."""
+        return self._get("field", recipe, frame, self._read)
+
+    def amplitude(self, recipe: Recipe, frame: int) -> NDArray[np.float32]:
+        """Return the field's modulus, counts."""
+        values = self._values(recipe, frame)
+        return self._blank() if isinstance(values, Skipped) else np.abs(values)
+
+    def phase(self, recipe: Recipe, frame: int) -> NDArray[np.float32]:
+        """Return the wrapped phase, rad."""
+        values = self._values(recipe, frame)
+        return self._blank() if isinstance(values, Skipped) else np.angle(values)
+
+    def unwrapped(self, recipe: Recipe, frame: int) -> NDArray[np.float32]:
+        """Return the unwrapped phase, rad."""
+        found = self.unwrapping(recipe, frame)
+        return found.phase if isinstance(found, Unwrapped) else self._blank()
+
+    def unwrapping(self, recipe: Recipe, frame: int) -> Unwrapped | Skipped:
+        """Return the unwrapped phase with its cuts."""
+        return self._get("unwrapped", recipe, frame, self._unwrap)
+
+    def wavevector(self, recipe: Recipe, frame: int) -> NDArray[np.float32] | Skipped:
+        """Return the local wavevector (2, y, x), rad/px."""
+        return self._get("wavevector", recipe, frame, self._wavevector)
+
+    def prepare(self, quantity: str, recipe: Recipe, frame: int) -> None:
+        """Compute a quantity, so that it is ready when it is asked for."""
+        makers: dict[str, Callable[[Recipe, int], object]] = {
+            "spectrum": self.spectrum,
+            "carrier": self.carrier,
+            "unwrapped": self.unwrapping,
+            "cuts": self.unwrapping,
+            "wavevectors": self.wavevector,
+        }
+        makers.get(quantity, self._values)(recipe, frame)
+
+    def ready(self, quantity: str, recipe: Recipe, frame: int) -> Any | None:
+        """Return a quantity if it is computed already, else None."""
+        name = {"cuts": "unwrapped", "wavevectors": "wavevector"}.get(quantity, quantity)
+        if name in ("amplitude", "phase"):
+            name = "values"
+        return self._cache.peek((name, self.key(name, recipe), frame))
+
+    def _values(self, recipe: Recipe, frame: int) -> NDArray[np.complex64] | Skipped:
+        return self._get("values", recipe, frame, self._on_pixels)
+
+    def _find_carrier(self, recipe: Recipe, frame: int) -> Carrier | Skipped:
+        radius = recipe.carrier.radius
+        try:
+            found = find_carrier(
+                self.hologram(frame),
+                radius=None if radius == "auto" else radius,
+                conjugate=recipe.carrier.conjugate,
+            )
+        except ValueError as error:
+            return Skipped(str(error))
+        return found if isinstance(found, Carrier) else Skipped(found.reason)
+
+    def _read(self, recipe: Recipe, frame: int) -> Field | Skipped:
+        try:
+            return field_of(self.plan(recipe), frame)
+        except ValueError as error:
+            return Skipped(str(error))
+
+    def _on_pixels(self, recipe: Recipe, frame: int) -> NDArray[np.complex64] | Skipped:
+        field = self.field(recipe, frame)
+        if isinstance(field, Skipped):
+            return field
+        values = on_pixels(field).astype(np.complex64, copy=False)
+        outside = _outside(field)
+        if outside is not None:
+            values[outside] = np.nan
+        return values
+
+    def _unwrap(self, recipe: Recipe, frame: int) -> Unwrapped | Skipped:
+        values = self._values(recipe, frame)
+        if isinstance(values, Skipped):
+            return values
+        valid = np.isfinite(values)
+        amplitude = np.where(valid, np.abs(values), np.float32(0))
+        weight = amplitude / amplitude.max() if recipe.phase.weight == "amplitude" else None
+        return unwrap(np.angle(values), weight=weight, valid=None if valid.all() else valid)
+
+    def _wavevector(self, recipe: Recipe, frame: int) -> NDArray[np.float32] | Skipped:
+        field = self.field(recipe, frame)
+        if isinstance(field, Skipped):
+            return field
+        wavevector = local_wavevector(field).astype(np.float32, copy=False)
+        outside = _outside(field)
+        if outside is not None:
+            wavevector[:, outside] = np.nan
+        return wavevector
+
+    def _get(
+        self, name: str, recipe: Recipe, frame: int, make: Callable[[Recipe, int], Any]
+    ) -> Any:
+        key = (name, self.key(name, recipe), frame)
+        return self._cache.get(key, lambda: make(recipe, frame))
+
+    def _blank(self) -> NDArray[np.float32]:
+        return np.full(self.shape[1:], np.nan, np.float32)
+
+
+def _outside(field: Field) -> NDArray[np.bool_] | None:
+    """Return the pixels outside the part of a field that was measured, None if there are none."""
+    ny, nx = field.grid.frame_shape
+    whole = Window(0.0, ny - 1.0, 0.0, nx - 1.0)
+    if field.grid.valid == whole:
+        return None
+    y, x = np.arange(float(ny))[:, None], np.arange(float(nx))[None, :]
+    return ~field.grid.valid.contains(y, x)

@@ -1,0 +1,127 @@
+"""What is open: one stack with its recipe, the tables found and the work that runs on it."""
+
+from __future__ import annotations
+
+from dataclasses import dataclass, field
+from typing import TYPE_CHECKING, Any
+
+import pandas as pd
+import xarray as xr
+from psygnal import Signal
+
+from hologyre.optics import Optics
+from hologyre.recipe import Recipe
+from hologyre.tables import EVENTS, FRAMES, SINGULARITIES, TRAJECTORIES, empty
+from hologyre.viewer.maps import FrameMaps
+
+if TYPE_CHECKING:
+    from hologyre.viewer.display import Display
+    from hologyre.viewer.worker import Task
+
+_METADATA = "hologyre"
+_ROLE = "hologyre_role"
+
+
+@dataclass(frozen=True, eq=False)
+class Tables:
+    """Tables found so far, and the recipes they were found with (None: not yet)."""
+
+    singularities: pd.DataFrame = field(default_factory=lambda: empty(SINGULARITIES))
+    frames: pd.DataFrame = field(default_factory=lambda: empty(FRAMES))
+    trajectories: pd.DataFrame = field(default_factory=lambda: empty(TRAJECTORIES))
+    events: pd.DataFrame = field(default_factory=lambda: empty(EVENTS))
+    found_with: Recipe | None = None
+    linked_with: Recipe | None = None
+
+
+class Session:
+    """One open stack.
+
+    Recipe and tables are values: a change puts a new one in place and tells whoever listens.
+    A session is found through the metadata of its layers, so that layers may be renamed.
+
+    Parameters
+    ----------
+    stack : DataArray
+        Holograms (t, y, x), one frame a chunk.
+    name : str
+        What the user calls the stack.
+    recipe : Recipe, optional
+        Settings to begin with.
+    """
+
+    recipe_changed = Signal()
+    tables_changed = Signal()
+    task_changed = Signal()
+
+    def __init__(self, stack: xr.DataArray, *, name: str, recipe: Recipe | None = None) -> None:
+        self.stack = stack
+        self.name = name
+        self.maps = FrameMaps(stack)
+        self.display: Display | None = None
+        self._recipe = recipe or Recipe()
+        self._tables = Tables()
+        self._task: Task | None = None
+
+    def __deepcopy__(self, memo: dict[int, Any]) -> Session:
+        # napari copies a layer's metadata when the layer is duplicated; it is the same stack
+        return self
+
+    @property
+    def recipe(self) -> Recipe:
+        """The settings, a value."""
+        return self._recipe
+
+    @recipe.setter
+    def recipe(self, recipe: Recipe) -> None:
+        if recipe != self._recipe:
+            self._recipe = recipe
+            self.recipe_changed.emit()
+
+    @property
+    def tables(self) -> Tables:
+        """The tables found so far, a value."""
+        return self._tables
+
+    @tables.setter
+    def tables(self, tables: Tables) -> None:
+        self._tables = tables
+        self.tables_changed.emit()
+
+    @property
+    def task(self) -> Task | None:
+        """The work that runs, if any."""
+        return self._task
+
+    @task.setter
+    def task(self, task: Task | None) -> None:
+        self._task = task
+        self.task_changed.emit()
+
+    @property
+    def optics(self) -> Optics:
+        """What is known of the optics, from the recipe or else from the file."""
+        settings = {
+            f"optics.{name}": self.stack.attrs.get(name)
+            for name in ("pixel_um", "frame_interval_s")
+            if getattr(self._recipe.optics, name) == "auto"
+        }
+        if self._recipe.optics.camera_pixel_um and self._recipe.optics.magnification:
+            settings.pop("optics.pixel_um", None)
+        return self._recipe.with_settings(settings).optics.values()
+
+
+def session_of(layer: Any) -> Session | None:
+    """Return the session a layer belongs to, or None."""
+    session = layer.metadata.get(_METADATA) if layer is not None else None
+    return session if isinstance(session, Session) else None
+
+
+def role_of(layer: Any) -> str:
+    """Return what a layer shows of its session: "stack", or a role of `styles`."""
+    return str(layer.metadata.get(_ROLE, ""))
+
+
+def metadata_for(session: Session, role: str) -> dict[str, Any]:
+    """Return the metadata of a layer that shows `role` of a session."""
+    return {_METADATA: session, _ROLE: role}
