@@ -1,9 +1,11 @@
 from __future__ import annotations
 
 import numpy as np
+import pandas as pd
+import pytest
 
 from hologyre.grid import Window
-from hologyre.simulate.truth import border_winding, find_zeros
+from hologyre.simulate.truth import TruthError, border_winding, find_zeros
 from hologyre.simulate.waves import RandomWaves, VortexBeam
 
 
@@ -28,3 +30,39 @@ def test_charge_inside_equals_winding_along_the_border() -> None:
         y, x = rng.uniform(-200, 200, 2)
         window = Window(y, y + rng.uniform(40, 120), x, x + rng.uniform(40, 120))
         assert find_zeros(wave, window)["charge"].sum() == border_winding(wave, window)
+
+
+@pytest.mark.parametrize("spectrum", ["ring", "disc", "gauss"])
+def test_a_finer_lattice_finds_no_other_zeros(
+    spectrum: str, monkeypatch: pytest.MonkeyPatch
+) -> None:
+    wave = RandomWaves(spectrum, 24.0, seed=6, count=80)  # type: ignore[arg-type]
+    window = Window(0.0, 150.0, 0.0, 150.0)
+    usual = find_zeros(wave, window)
+    monkeypatch.setattr("hologyre.simulate.zeros._CELLS", 33)
+    pd.testing.assert_frame_equal(find_zeros(wave, window), usual, atol=1e-8, rtol=0)
+
+
+def test_zeros_vanish_in_the_formula() -> None:
+    wave = RandomWaves("disc", 24.0, 0.2, seed=6, count=80)
+    zeros = find_zeros(wave, Window(0.0, 200.0, 0.0, 200.0), 3.5)
+    assert len(zeros) > 80
+    # Slopes are about 0.2 a pixel and steps end below 2.4e-10 px.
+    assert np.abs(wave.field(zeros["y_px"], zeros["x_px"], 3.5)).max() < 1e-9
+
+
+def test_mirrored_phase_flips_every_charge() -> None:
+    places = [(20.0, 30.0), (60.0, 45.0)]
+    window = Window(0.0, 100.0, 0.0, 100.0)
+    settings = {"waist_px": 50.0, "centre_px": (50.0, 50.0)}
+    plain = find_zeros(VortexBeam.hosting(places, **settings), window)
+    mirrored = find_zeros(VortexBeam.hosting((), places, **settings), window)
+    np.testing.assert_allclose(plain["y_px"], mirrored["y_px"], atol=1e-9)
+    assert plain["charge"].tolist() == [1, 1]
+    assert mirrored["charge"].tolist() == [-1, -1]
+
+
+def test_a_zero_on_the_border_has_no_winding() -> None:
+    beam = VortexBeam.hosting([(0.0, 30.0)], waist_px=50, centre_px=(50, 50))
+    with pytest.raises(TruthError, match="a zero lies on the closed line at t = 0"):
+        border_winding(beam, Window(0.0, 100.0, 0.0, 100.0))

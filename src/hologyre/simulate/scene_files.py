@@ -5,7 +5,7 @@ from __future__ import annotations
 import json
 import os
 import uuid
-from collections.abc import Callable
+from collections.abc import Callable, Iterable
 from dataclasses import asdict, is_dataclass
 from pathlib import Path
 from typing import Any, NamedTuple
@@ -30,7 +30,7 @@ _README = """# {stack}: a SIMULATION
 Nothing here was measured. The holograms were computed by hologyre from a field known in closed
 form (`scene.json` holds every setting) and a camera with noise. Make it again with
 
-    hologyre simulate {name} --out DIR{options}
+    {how}
 
 | file | what it holds |
 |---|---|
@@ -71,7 +71,7 @@ def file_names(name: str, folder: Path) -> SceneFiles:
     )
 
 
-def refuse_existing(paths: SceneFiles) -> None:
+def refuse_existing(paths: Iterable[Path]) -> None:
     """Raise FileExistsError if one of the files is there already."""
     for path in paths:
         if path.exists():
@@ -88,7 +88,7 @@ def write_files(
     wave: Wave,
     setup: Setup,
     optics: Optics,
-    options: str = "",
+    how: str,
 ) -> None:
     """Write a scene's files, each whole (under another name first).
 
@@ -108,8 +108,8 @@ def write_files(
         The camera before it.
     optics : Optics
         Wavelength, pixel and frame interval.
-    options : str
-        What the command that makes the scene says besides its name and folder.
+    how : str
+        The line that makes the scene again.
     """
     paths.stack.parent.mkdir(parents=True, exist_ok=True)
     settings = {
@@ -129,8 +129,7 @@ def write_files(
     readme = _README.format(
         stack=paths.stack.name,
         description=description[0].upper() + description[1:],
-        name=name,
-        options=options,
+        how=how,
         frames=stack.shape[0],
         ny=stack.shape[1],
         nx=stack.shape[2],

@@ -195,8 +195,17 @@ def write_scene(
         wave=staged.wave,
         setup=staged.setup,
         optics=optics,
+        how=_how(name, seed, frames, shape),
     )
     return paths
+
+
+def _how(name: str, seed: int, frames: int | None, shape: Shape | None) -> str:
+    """Return the line that makes a scene again: the command, or Python where it says more."""
+    if seed == 0 and frames is None and shape is None:
+        return f"hologyre simulate {name} --out DIR"
+    options = f"seed={seed}, frames={frames}, shape={shape}"
+    return f'hologyre.simulate.scenes.write_scene("{name}", "DIR", {options})'
 
 
 def _film(shape: Shape, seed: int) -> Wave:
@@ -262,7 +271,7 @@ def _hosting(
     zeta_rate: float = 0.0,
 ) -> VortexBeam:
     """Return a beam in the middle of the frame; places as parts of its waist from the axis."""
-    waist = 0.42 * min(shape)
+    waist = 0.3 * min(shape)
     centre = ((shape[0] - 1) / 2, (shape[1] - 1) / 2)
 
     def places(parts: tuple[tuple[float, float], ...]) -> list[tuple[float, float]]:
@@ -281,10 +290,10 @@ def _hosting(
 def _vortex_beams(shape: Shape, seed: int) -> Wave:
     return _hosting(
         shape,
-        positive=((0.31, 0.42), (-0.48, 0.13), (0.12, -0.52)),
-        negative=((0.27, 0.05), (-0.22, -0.29)),
-        zeta=-0.6,
-        zeta_rate=0.05,
+        positive=((0.55, 0.5), (-0.65, 0.2), (0.05, -0.75)),
+        negative=((0.5, -0.4), (-0.15, 0.05)),
+        zeta=-0.4,
+        zeta_rate=1 / 30,
     )
 
 

@@ -91,7 +91,8 @@ def true_tracks(
     The zeros of each frame are found afresh (`find_zeros`), then each is followed along its line
     in space-time to the next frame. A line that returns to its own frame is a birth or a death
     of a pair, one that crosses the window's border an entry or an exit. What happens wholly
-    between two frames leaves no trace.
+    between two frames leaves no trace: a line that turns back and forth there is one link, a
+    closed loop is nothing.
 
     Parameters
     ----------
