@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from hologyre.analyse.analysis import Analysis, LazyFields, analyse
+from hologyre.analyse.analysis import Analysis, LazyFields, analyse, unwrap_field, wrapped_phase
 from hologyre.analyse.frame import FrameResult, field_of, measure
 from hologyre.analyse.inspection import Inspection, inspect
 from hologyre.analyse.iterate import iter_frames
@@ -24,4 +24,6 @@ __all__ = [
     "link",
     "measure",
     "plan",
+    "unwrap_field",
+    "wrapped_phase",
 ]

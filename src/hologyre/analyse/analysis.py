@@ -18,8 +18,8 @@ from hologyre.analyse.motion import frame_table, join_singularities, link
 from hologyre.analyse.planning import Plan, plan
 from hologyre.fields.interpolate import on_pixels
 from hologyre.grid import Field
-from hologyre.phase.unwrap import unwrap
-from hologyre.recipe import Recipe
+from hologyre.phase.unwrap import Unwrapped, unwrap
+from hologyre.recipe import PhaseSettings, Recipe
 from hologyre.stacks import as_stack
 from hologyre.survey import survey
 
@@ -89,15 +89,20 @@ class Analysis:
     @property
     def phase(self) -> xr.DataArray:
         """Wrapped phase on the hologram's pixels, rad in (-pi, pi], (t, y, x), lazy."""
-        return self._by_frame(_wrapped, "phase")
+        return self._by_frame(wrapped_phase, "phase")
 
     @property
     def unwrapped(self) -> xr.DataArray:
         """Unwrapped phase on the hologram's pixels, rad, (t, y, x), lazy.
 
-        The cuts each frame took are given by ``hologyre.unwrap`` on that frame's phase.
+        `unwrap_field` gives one frame's with the cuts it took.
         """
-        return self._by_frame(_unwrapped, "unwrapped")
+        settings = self.recipe.phase
+
+        def unwrapped(field: Field) -> NDArray[np.float32]:
+            return np.asarray(unwrap_field(field, settings).phase, dtype=np.float32)
+
+        return self._by_frame(unwrapped, "unwrapped")
 
     def _by_frame(self, of: Callable[[Field], NDArray[np.float32]], name: str) -> xr.DataArray:
         done = np.array(self.measured, dtype=np.int64)
@@ -166,10 +171,25 @@ def analyse(
     )
 
 
-def _wrapped(field: Field) -> NDArray[np.float32]:
+def wrapped_phase(field: Field) -> NDArray[np.float32]:
+    """Return a field's phase on the hologram's pixels, rad in (-pi, pi], NaN where not valid."""
     phase = np.angle(on_pixels(field)).astype(np.float32)
-    return np.where(phase <= -np.float32(np.pi), np.float32(np.pi), phase)
+    phase[phase <= -np.float32(np.pi)] = np.float32(np.pi)
+    phase[~_valid_pixels(field)] = np.nan
+    return phase
 
 
-def _unwrapped(field: Field) -> NDArray[np.float32]:
-    return np.asarray(unwrap(_wrapped(field)).phase, dtype=np.float32)
+def unwrap_field(field: Field, settings: PhaseSettings) -> Unwrapped:
+    """Unwrap a field's phase on the hologram's pixels as a recipe says."""
+    phase, valid = wrapped_phase(field), _valid_pixels(field)
+    weight = None
+    if settings.weight == "amplitude":
+        amplitude = np.abs(on_pixels(field))
+        weight = np.where(valid, amplitude / amplitude[valid].max(), 0)
+    return unwrap(phase, weight=weight, valid=None if valid.all() else valid)
+
+
+def _valid_pixels(field: Field) -> NDArray[np.bool_]:
+    ny, nx = field.grid.frame_shape
+    y, x = np.arange(ny, dtype=np.float64), np.arange(nx, dtype=np.float64)
+    return field.grid.valid.contains(y[:, None], x)

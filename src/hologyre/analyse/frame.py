@@ -84,7 +84,7 @@ def measure(plan: Plan, frame: int) -> FrameResult:
         valid=finite_pixels(counts),
         saturation=_level(plan),
     )
-    power = float(np.mean(np.abs(field.values) ** 2, dtype=np.float64))
+    power = mean_power(field)
     known["noise"] = noise.rms
     known["visibility"] = 2 * power**0.5 / float(np.nanmean(counts, dtype=np.float64))
     if power < _FAINT_POWER * noise.rms**2:
@@ -131,6 +131,13 @@ def _level(plan: Plan) -> float:
     """Return the count at which pixels are saturated, infinite when there is none."""
     level = saturation_of(plan.recipe)
     return math.inf if level is None else level
+
+
+def mean_power(field: Field) -> float:
+    """Return the mean of |E|^2 over the samples that came from pixels."""
+    valid, (rows, columns) = field.grid.valid, field.shape
+    inside = valid.contains(field.grid.y_px(rows)[:, None], field.grid.x_px(columns))
+    return float(np.mean(np.abs(field.values[inside]) ** 2, dtype=np.float64))
 
 
 def border_winding(field: Field, margin_px: float = 0.0) -> int:

@@ -6,11 +6,10 @@ import math
 from dataclasses import dataclass
 from typing import Any
 
-import numpy as np
 import xarray as xr
 from numpy.typing import ArrayLike
 
-from hologyre.analyse.frame import measure
+from hologyre.analyse.frame import mean_power, measure
 from hologyre.analyse.planning import plan
 from hologyre.fields.carrier import Carrier, find_carrier
 from hologyre.recipe import Recipe
@@ -152,7 +151,7 @@ def inspect(
     found = find_carrier(
         read_counts(stack, result.frame, resolved), conjugate=resolved.carrier.conjugate
     )
-    amplitude = float(np.sqrt(np.mean(np.abs(result.field.values) ** 2, dtype=np.float64)))
+    amplitude = math.sqrt(mean_power(result.field))
     limit = min(carrier.frequency / 3, 0.5 - abs(carrier.fy), 0.5 - abs(carrier.fx))
     noise = row["noise"] / (amplitude * math.sqrt(2))
     notes = found.notes if isinstance(found, Carrier) else ()

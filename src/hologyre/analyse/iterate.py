@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 from collections import deque
-from collections.abc import Callable, Iterable, Iterator, Sequence
+from collections.abc import Callable, Generator, Iterable, Sequence
 from concurrent.futures import Future, ThreadPoolExecutor
 from functools import partial
 from typing import Any
@@ -15,6 +15,8 @@ from hologyre.analyse.frame import FrameResult, measure
 from hologyre.analyse.planning import Plan, plan
 from hologyre.recipe import Recipe
 
+FrameResults = Generator[FrameResult, None, None]
+
 
 def iter_frames(
     stack: xr.DataArray | ArrayLike | Plan,
@@ -23,7 +25,7 @@ def iter_frames(
     frames: Iterable[int] | None = None,
     workers: int = 1,
     scheduler: str | None = None,
-) -> Iterator[FrameResult]:
+) -> FrameResults:
     """Analyse frame by frame, in order; closing the iterator cancels what is left.
 
     Parameters
@@ -63,12 +65,17 @@ def iter_frames(
     work = partial(measure, planned)
     if scheduler is not None:
         return _on_cluster(work, wanted, scheduler)
-    return _in_threads(work, wanted, workers) if workers > 1 else map(work, wanted)
+    return _in_threads(work, wanted, workers) if workers > 1 else _in_turn(work, wanted)
+
+
+def _in_turn(work: Callable[[int], FrameResult], frames: Sequence[int]) -> FrameResults:
+    for frame in frames:
+        yield work(frame)
 
 
 def _in_threads(
     work: Callable[[int], FrameResult], frames: Sequence[int], workers: int
-) -> Iterator[FrameResult]:
+) -> FrameResults:
     pool = ThreadPoolExecutor(workers, thread_name_prefix="hologyre-frame")
     try:
         yield from _ordered(lambda frame: pool.submit(work, frame), frames, 2 * workers)
@@ -78,7 +85,7 @@ def _in_threads(
 
 def _on_cluster(
     work: Callable[[int], FrameResult], frames: Sequence[int], address: str
-) -> Iterator[FrameResult]:
+) -> FrameResults:
     from distributed import Client
 
     with Client(address, set_as_default=False) as client:
@@ -86,9 +93,7 @@ def _on_cluster(
         yield from _ordered(lambda frame: client.submit(work, frame, pure=False), frames, ahead)
 
 
-def _ordered(
-    submit: Callable[[int], Any], frames: Sequence[int], ahead: int
-) -> Iterator[FrameResult]:
+def _ordered(submit: Callable[[int], Any], frames: Sequence[int], ahead: int) -> FrameResults:
     """Keep a few frames under way and give them back in order."""
     waiting: deque[Future[FrameResult]] = deque()
     try:

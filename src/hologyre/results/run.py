@@ -5,7 +5,7 @@ from __future__ import annotations
 import json
 import platform
 import time
-from collections.abc import Callable, Generator
+from collections.abc import Callable
 from contextlib import suppress
 from dataclasses import dataclass
 from importlib import metadata
@@ -188,8 +188,7 @@ def _measure(
     except KeyboardInterrupt:
         return "interrupted"
     finally:
-        if isinstance(results, Generator):
-            results.close()
+        results.close()
     return "done"
 
 
