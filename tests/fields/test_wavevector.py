@@ -92,7 +92,7 @@ def test_a_plane_wave_has_its_own_wavevector_everywhere() -> None:
 def test_tilt_is_part_of_the_wavevector() -> None:
     band = Band((60, 60), (60, 60), (0.2012, 0.15), 0.05)
     spectrum = np.zeros(band.weights().shape, dtype=complex)
-    spectrum[tuple(n // 2 for n in spectrum.shape)] = 1
+    spectrum[band.half] = 1
     ky, kx = local_wavevector(band.field(spectrum, "band"))
     assert np.allclose(ky, 2 * np.pi * (0.2 - 0.2012))
     assert np.allclose(kx, 0, atol=1e-12)

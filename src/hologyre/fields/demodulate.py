@@ -124,7 +124,7 @@ def demodulate(
     else:
         band = Band(shape, shape, at, reading_radius(carrier, shape) if reach is None else reach)
         passed: NDArray[Any] = band.weights(window).astype(real)
-        fades = _fades(shape, carrier.radius, real) if edges == "taper" else None
+        fades = border_fades(shape, carrier.radius, real) if edges == "taper" else None
         inside = None if fades is None else _inside(fades, shape)
 
         def read(counts: NDArray[Any]) -> NDArray[np.complexfloating]:
@@ -157,7 +157,41 @@ def demodulate(
         spectrum = np.stack([read(prepared(frame)) for frame in frames])
     if blanks is None or blanks.empty is None:
         return _of_radius(band.field(spectrum, sampling, inside), carrier)
-    dark = None if blanks.dark is None else Blanks(dark=blanks.dark)
+    inverse = empty_inverse(
+        blanks,
+        carrier,
+        edges=edges,
+        window=window,
+        reach=reach,
+        valid=valid,
+        precision=precision,
+    )
+    field = _of_radius(band.field(spectrum, "full", inside), carrier)
+    return field.with_values(field.values * inverse.values)
+
+
+def empty_inverse(
+    blanks: Blanks,
+    carrier: Carrier,
+    *,
+    edges: Edges = "fit",
+    window: FilterWindow = "disc",
+    reach: float | None = None,
+    valid: NDArray[np.bool_] | None = None,
+    precision: Precision = "single",
+) -> Field:
+    """Return the field that divides the empty frame's out, with full sampling.
+
+    It is the empty frame's median modulus over its field; where the modulus is under 0.05 of
+    the median there is nothing to divide by, and only the phase is taken out.
+
+    Raises
+    ------
+    ValueError
+        If there is no empty frame, or no fringes in it at this carrier.
+    """
+    if blanks.empty is None:
+        raise ValueError("blanks.empty: expected a frame, got None")
     blank = demodulate(
         blanks.empty,
         carrier,
@@ -165,12 +199,20 @@ def demodulate(
         sampling="full",
         window=window,
         reach=reach,
-        blanks=dark,
+        blanks=None if blanks.dark is None else Blanks(dark=blanks.dark),
         valid=valid,
         precision=precision,
     )
-    field = _of_radius(band.field(spectrum, "full", inside), carrier)
-    return field.with_values(field.values * _inverse(blank.values, shape))
+    modulus = np.abs(blank.values)
+    ny, nx = blank.grid.frame_shape
+    typical = float(np.median(modulus[:ny, :nx]))
+    if typical == 0:
+        raise ValueError("blanks.empty: there are no fringes in it at this carrier")
+    phase = np.conj(blank.values) / np.where(modulus > 0, modulus, 1)
+    bright = modulus > _EMPTY_FLOOR * typical
+    factor = np.where(bright, typical / np.where(bright, modulus, 1), 1)
+    values: NDArray[Any] = (phase * factor).astype(blank.values.dtype)
+    return Field(values, blank.grid, (-blank.tilt_per_px[0], -blank.tilt_per_px[1]), carrier.radius)
 
 
 def reading_radius(carrier: Carrier, frame_shape: tuple[int, int]) -> float:
@@ -195,23 +237,8 @@ def _of_radius(field: Field, carrier: Carrier) -> Field:
     return Field(field.values, field.grid, field.tilt_per_px, carrier.radius)
 
 
-def _inverse(
-    blank: NDArray[np.complexfloating], frame_shape: tuple[int, int]
-) -> NDArray[np.complexfloating]:
-    """Return what divides a blank field out, its phase alone where it is too dark."""
-    modulus = np.abs(blank)
-    typical = float(np.median(modulus[: frame_shape[0], : frame_shape[1]]))
-    if typical == 0:
-        raise ValueError("blanks.empty: there are no fringes in it at this carrier")
-    phase = np.conj(blank) / np.where(modulus > 0, modulus, 1)
-    bright = modulus > _EMPTY_FLOOR * typical
-    factor = np.where(bright, typical / np.where(bright, modulus, 1), 1)
-    inverse: NDArray[np.complexfloating] = (phase * factor).astype(blank.dtype)
-    return inverse
-
-
-def _fades(
-    shape: tuple[int, int], radius: float, real: type[np.floating]
+def border_fades(
+    shape: tuple[int, int], radius: float, real: type[np.floating] = np.float64
 ) -> tuple[NDArray[np.floating], NDArray[np.floating]]:
     """Fade a frame's borders out over one shortest wavelength, by cosines."""
     fades = []

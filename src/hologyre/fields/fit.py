@@ -15,8 +15,8 @@ from hologyre.fields.fit_plan import ComplexArray, Plan, RealArray
 from hologyre.fields.transform import band_spectra
 
 _SWEEPS = 20
-_DAMPING = 3e-5
-_STEPS = 80
+_DAMPING = 1e-5
+_STEPS = 120
 _ALIKE = 0.1
 """Directions alike to this degree are told apart no further: it would magnify noise."""
 
