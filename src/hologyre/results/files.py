@@ -59,7 +59,6 @@ def read_csv(path: Path, columns: tuple[Column, ...]) -> pd.DataFrame:
     table = pd.read_csv(
         path,
         dtype={c.name: c.dtype for c in columns},
-        float_precision="round_trip",
         keep_default_na=False,
         na_values={c.name: [""] for c in columns if c.dtype != "str"},
     )
