@@ -86,6 +86,13 @@ def test_nyquist_is_shared_so_that_conjugation_commutes() -> None:
     assert np.allclose(mirrored, spectrum[::-1, ::-1].conj(), atol=1e-15)
 
 
+def test_samples_on_a_longer_torus_are_returned_even_at_nyquist() -> None:
+    rng = np.random.default_rng(0)
+    values = rng.normal(size=(8, 6)) + 1j * rng.normal(size=(8, 6))
+    grid = Grid.pixels((5, 4))
+    assert np.allclose(on_pixels(Field(values, grid)), values[:5, :4], atol=1e-14)
+
+
 def test_a_field_on_the_pixels_is_returned_as_it_is() -> None:
     field = Field(np.ones((5, 4), dtype=np.complex64), Grid.pixels((5, 4)))
     assert on_pixels(field) is field.values

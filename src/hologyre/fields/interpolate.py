@@ -230,13 +230,13 @@ def _along(
         shape = [1] * spectrum.ndim
         shape[axis] = -1
         shift = np.exp(-2j * np.pi * bins * origin / period).astype(spectrum.dtype)
-        padded_shape = list(spectrum.shape)
-        padded_shape[axis] = whole
-        padded = np.zeros(padded_shape, dtype=spectrum.dtype)
-        index: list[slice | NDArray[np.intp]] = [slice(None)] * spectrum.ndim
-        index[axis] = bins % whole
-        padded[tuple(index)] = spectrum * shift.reshape(shape)
-        values = scipy.fft.ifft(padded, axis=axis, norm="forward", overwrite_x=True)
+        shifted = np.moveaxis(spectrum * shift.reshape(shape), axis, 0)
+        padded = np.zeros((whole, *shifted.shape[1:]), dtype=spectrum.dtype)
+        padded[bins[:-1] % whole] = shifted[:-1]
+        # Both halves of Nyquist's coefficient meet in one bin.
+        padded[bins[-1] % whole] += shifted[-1]
+        padded = np.moveaxis(padded, 0, axis)
+        values = scipy.fft.ifft(padded, axis=axis, norm="forward")
         return values.take(range(count), axis=axis) if count < whole else values
     waves = np.exp(2j * np.pi * np.outer(np.arange(count) - origin, bins) / period)
     summed = np.tensordot(spectrum, waves.astype(spectrum.dtype), axes=(axis, 1))
