@@ -154,6 +154,14 @@ def test_blanks_show_dark_reference_and_both_beams() -> None:
     assert columns[120] - columns[122] > 0.5 * columns[120]
 
 
+def test_empty_frame_is_as_bright_as_the_object() -> None:
+    camera = Camera(visibility=0.6)
+    dim, bright = (
+        set_up(camera, level * PLANE, seed=0).empty().astype(float) for level in (0.1, 30.0)
+    )
+    np.testing.assert_array_equal(dim, bright)
+
+
 @pytest.mark.parametrize(
     ("settings", "message"),
     [

@@ -39,6 +39,20 @@ def test_a_scene_is_the_same_byte_for_byte_each_time(tmp_path: Path) -> None:
         assert one.read_bytes() == other.read_bytes()
 
 
+@pytest.mark.parametrize(
+    ("seed", "shape", "line"),
+    [
+        (0, None, "hologyre simulate charge-two --out DIR\n"),
+        (4, None, "hologyre simulate charge-two --out DIR --seed 4\n"),
+        (4, (64, 70), 'write_scene("charge-two", "DIR", seed=4, frames=None, shape=(64, 70))'),
+    ],
+)
+def test_readme_tells_how_to_make_the_scene_again(
+    tmp_path: Path, seed: int, shape: tuple[int, int] | None, line: str
+) -> None:
+    assert line in write_scene("charge-two", tmp_path, seed=seed, shape=shape).readme.read_text()
+
+
 def test_existing_files_are_not_overwritten(tmp_path: Path) -> None:
     (tmp_path / "scene.json").write_text("mine")
     with pytest.raises(FileExistsError, match=r"scene\.json is there already"):

@@ -7,8 +7,14 @@ import pandas as pd
 import pytest
 
 from hologyre.grid import Window
-from hologyre.simulate.truth import Truth, TruthError, check_conservation, true_tracks
-from hologyre.simulate.waves import Drifting, RandomWaves, VortexBeam
+from hologyre.simulate.truth import (
+    Truth,
+    TruthError,
+    check_conservation,
+    find_zeros,
+    true_tracks,
+)
+from hologyre.simulate.waves import Drifting, RandomWaves, VortexBeam, Wave
 from hologyre.tables import EVENTS
 
 WINDOW = Window(0.0, 110.0, 0.0, 90.0)
@@ -143,6 +149,26 @@ def test_a_missing_event_is_noticed(speckle: Truth) -> None:
     check_conservation(speckle, frames)
     with pytest.raises(TruthError, match="the events account for"):
         check_conservation(speckle._replace(events=speckle.events.iloc[1:]), frames)
+
+
+def test_a_pair_the_finder_missed_is_found_by_following(
+    speckle: Truth, monkeypatch: pytest.MonkeyPatch
+) -> None:
+    wave = RandomWaves("disc", 24.0, 0.15, seed=11, count=60)
+    # Rows of one zero of each charge that live through frames 3 to 5.
+    there = speckle.tracks[speckle.tracks["frame"].isin([3, 4, 5])]
+    lived = there.groupby("track").filter(lambda rows: len(rows) == 3)
+    pair = lived[lived["frame"] == 4].groupby("charge").head(1)
+    assert len(pair) == 2
+
+    def forgetful(wave: Wave, window: Window, t: float) -> pd.DataFrame:
+        zeros = find_zeros(wave, window, t)
+        return zeros[~zeros["y_px"].isin(pair["y_px"])].reset_index(drop=True)
+
+    monkeypatch.setattr("hologyre.simulate.truth.find_zeros", forgetful)
+    again = true_tracks(wave, WINDOW, 9)
+    pd.testing.assert_frame_equal(again.tracks, speckle.tracks, atol=1e-8, rtol=0)
+    pd.testing.assert_frame_equal(again.events, speckle.events, atol=1e-8, rtol=0)
 
 
 def test_a_zero_of_higher_order_is_not_followed() -> None:

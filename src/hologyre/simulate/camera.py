@@ -2,7 +2,6 @@
 
 from __future__ import annotations
 
-from collections.abc import Iterable
 from dataclasses import dataclass, field
 
 import numpy as np
@@ -249,9 +248,9 @@ class Setup:
         light = self.counts_per_unit * (self.dust * self.reference) ** 2
         return self._expose(light + self.hot_counts + self.camera.black_level, _REFERENCE, frame)
 
-    def empty(self, frame: int = 0, level: complex = 1.0) -> NDArray[np.unsignedinteger]:
-        """Return a hologram with both beams and no object: a plane wave of amplitude `level`."""
-        plane = np.full(self.shape, level, dtype=np.complex128)
+    def empty(self, frame: int = 0) -> NDArray[np.unsignedinteger]:
+        """Return a hologram with both beams and no object: a plane wave as bright as the object."""
+        plane = np.full(self.shape, _beam_ratio(self.camera.visibility) / self.object_gain)
         return self._expose(self.expected(plane, frame), _EMPTY, frame)
 
     def _checked(self, object_field: ArrayLike) -> ComplexArray:
@@ -313,13 +312,11 @@ def set_up(camera: Camera, object_field: ArrayLike, *, seed: int) -> Setup:
     dust = np.ones(shape)
     for speck in camera.dust:
         dust *= speck.transmission(shape)
-    # Root of the beam ratio Io / Ir, from V = 2 rho / (1 + rho^2), reference stronger.
-    rho = (1 - np.sqrt(1 - camera.visibility**2)) / camera.visibility
     plain = Setup(
         camera=camera,
         seed=seed,
         reference=reference,
-        object_gain=float(rho / np.sqrt(power)),
+        object_gain=float(_beam_ratio(camera.visibility) / np.sqrt(power)),
         counts_per_unit=1.0,
         dust=dust,
         hot_counts=np.zeros(shape),
@@ -362,11 +359,12 @@ def record(object_field: ArrayLike, camera: Camera, *, seed: int) -> NDArray[np.
             f"object_field: expected (y, x) or (t, y, x) with frames, got shape {values.shape}"
         )
     setup = set_up(camera, values[0], seed=seed)
-    return _stack(setup.record(one, frame) for frame, one in enumerate(values))
+    return np.stack([setup.record(one, frame) for frame, one in enumerate(values)])
 
 
-def _stack(frames: Iterable[NDArray[np.unsignedinteger]]) -> NDArray[np.unsignedinteger]:
-    return np.stack(list(frames))
+def _beam_ratio(visibility: float) -> float:
+    """Return the amplitudes' ratio rho of V = 2 rho / (1 + rho^2), the reference stronger."""
+    return float((1 - np.sqrt(1 - visibility**2)) / visibility)
 
 
 def _hot_counts(camera: Camera, shape: tuple[int, int], seed: int) -> FloatArray:

@@ -75,7 +75,7 @@ def refuse_existing(paths: Iterable[Path]) -> None:
     """Raise FileExistsError if one of the files is there already."""
     for path in paths:
         if path.exists():
-            raise FileExistsError(f"{path} is there already: choose another folder or remove it")
+            raise FileExistsError(f"{path} is there already")
 
 
 def write_files(

@@ -22,7 +22,7 @@ __all__ = ["Truth", "TruthError", "border_winding", "find_zeros", "true_tracks"]
 # An end of a line this near a zero, in finest lengths, is that zero.
 _SAME = 1e-5
 # Times the steps along the lines are halved before giving up.
-_RETRIES = 5
+_RETRIES = 7
 
 TRACK_COLUMNS = ("track", "frame", "time_s", "y_px", "x_px", "y_um", "x_um", "charge")
 
@@ -124,11 +124,13 @@ def true_tracks(
     if n_frames < 1:
         raise ValueError(f"n_frames: expected 1 or more, got {n_frames!r}")
     zeros = [find_zeros(wave, window, 0.0)]
+    windings = [zeros[0]["charge"].sum()]
     bridges: list[_Bridge] = []
     while len(bridges) < n_frames - 1:
         frame = len(bridges)
         if len(zeros) == frame + 1:
             zeros.append(find_zeros(wave, window, frame + 1.0))
+            windings.append(zeros[-1]["charge"].sum())
         bridge = _bridge(wave, window, zeros[frame], zeros[frame + 1], frame)
         if bridge.missed_before:
             zeros[frame] = _with_missed(wave, window, zeros[frame], bridge.missed_before, frame)
@@ -142,6 +144,10 @@ def true_tracks(
             bridges.append(bridge)
         if progress is not None:
             progress((len(bridges) + 1) / n_frames)
+    for frame, table in enumerate(zeros):
+        # The finder made sure of the winding; what was added later must come in pairs.
+        if table["charge"].sum() != windings[frame]:
+            raise TruthError(f"frame {frame}: zeros found late do not come in pairs")
     truth = _assemble(zeros, bridges)
     check_conservation(truth, zeros)
     return Truth(
@@ -263,7 +269,7 @@ def _at(spots: FloatArray, here: tuple[float, float], close: float) -> int | Non
 def _with_missed(
     wave: Wave, window: Window, zeros: pd.DataFrame, missed: list[tuple[float, float]], frame: int
 ) -> pd.DataFrame:
-    """Return the zeros with those the finder had missed; the total charge must stay right."""
+    """Return the zeros with those the finder had missed."""
     spots = np.array(missed)
     if len(spots) > 1:
         pairs = cKDTree(spots).query_pairs(_SAME * wave.finest_px, output_type="ndarray")

@@ -102,32 +102,20 @@ def border_winding(wave: Wave, window: Window, t: float = 0.0) -> int:
         along = np.arange(count) / count
         y.append(y0 + along * (y1 - y0))
         x.append(x0 + along * (x1 - x0))
-    return int(_winding(wave, np.concatenate(y)[np.newaxis], np.concatenate(x)[np.newaxis], t)[0])
+    return _winding(wave, np.concatenate(y), np.concatenate(x), t)
 
 
-def _winding(wave: Wave, y: FloatArray, x: FloatArray, t: float) -> FloatArray:
-    """Return the turns of the phase along closed polygons (one a row), refined as needed."""
-    for _ in range(24):
+def _winding(wave: Wave, y: FloatArray, x: FloatArray, t: float) -> int:
+    """Return the turns of the phase along a closed polygon, refined where the phase is steep."""
+    for _ in range(40):
         value = wave.field(y, x, t)
-        turn = np.angle(np.roll(value, -1, axis=-1) * np.conj(value))
-        if np.all(value != 0) and np.abs(turn).max() < np.pi / 3:
-            return np.rint(turn.sum(axis=-1) / (2 * np.pi))
-        if y.shape[0] == 1:
-            # One long line: put points only where the phase turns fast.
-            steep = np.flatnonzero(np.abs(turn[0]) >= np.pi / 3)
-            y = _insert(y, steep)
-            x = _insert(x, steep)
-        else:
-            y, x = _insert(y, np.arange(y.shape[1])), _insert(x, np.arange(x.shape[1]))
-        if y.size > 1 << 22:
-            break
+        turn = np.angle(np.roll(value, -1) * np.conj(value))
+        steep = np.flatnonzero((np.abs(turn) >= np.pi / 3) | (value == 0))
+        if steep.size == 0:
+            return int(np.rint(turn.sum() / (2 * np.pi)))
+        y = np.insert(y, steep + 1, ((y + np.roll(y, -1)) / 2)[steep])
+        x = np.insert(x, steep + 1, ((x + np.roll(x, -1)) / 2)[steep])
     raise TruthError(f"a zero lies on the closed line at t = {t:g}: its winding has no value")
-
-
-def _insert(points: FloatArray, after: np.ndarray) -> FloatArray:
-    """Return closed polygons with midpoints inserted after these vertices."""
-    middle = (points + np.roll(points, -1, axis=-1)) / 2
-    return np.insert(points, after + 1, middle[:, after], axis=-1)
 
 
 def _candidates(wave: Wave, window: Window, t: float, step: float) -> tuple[FloatArray, FloatArray]:
@@ -223,5 +211,5 @@ def _charges(wave: Wave, y: FloatArray, x: FloatArray, t: float, taken: np.ndarr
         for i in doubtful:
             ring_y = y[i] + radius[i] * np.sin(angle)
             ring_x = x[i] + radius[i] * np.cos(angle)
-            charge[i] = _winding(wave, ring_y[np.newaxis], ring_x[np.newaxis], t)[0]
+            charge[i] = _winding(wave, ring_y, ring_x, t)
     return charge
