@@ -5,17 +5,19 @@ from __future__ import annotations
 from hologyre.analyse.analysis import Analysis, LazyFields, analyse, unwrap_field, wrapped_phase
 from hologyre.analyse.frame import FrameResult, field_of, measure
 from hologyre.analyse.inspection import Inspection, inspect
-from hologyre.analyse.iterate import iter_frames
+from hologyre.analyse.iterate import ClusterError, connect, iter_frames
 from hologyre.analyse.motion import frame_table, join_singularities, link
 from hologyre.analyse.planning import Plan, plan
 
 __all__ = [
     "Analysis",
+    "ClusterError",
     "FrameResult",
     "Inspection",
     "LazyFields",
     "Plan",
     "analyse",
+    "connect",
     "field_of",
     "frame_table",
     "inspect",

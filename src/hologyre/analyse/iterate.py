@@ -6,7 +6,7 @@ from collections import deque
 from collections.abc import Callable, Generator, Iterable, Sequence
 from concurrent.futures import Future, ThreadPoolExecutor
 from functools import partial
-from typing import Any
+from typing import TYPE_CHECKING, Any
 
 import xarray as xr
 from numpy.typing import ArrayLike
@@ -14,6 +14,9 @@ from numpy.typing import ArrayLike
 from hologyre.analyse.frame import FrameResult, measure
 from hologyre.analyse.planning import Plan, plan
 from hologyre.recipe import Recipe
+
+if TYPE_CHECKING:
+    from distributed import Client
 
 FrameResults = Generator[FrameResult, None, None]
 
@@ -24,7 +27,7 @@ def iter_frames(
     *,
     frames: Iterable[int] | None = None,
     workers: int = 1,
-    scheduler: str | None = None,
+    client: Client | None = None,
 ) -> FrameResults:
     """Analyse frame by frame, in order; closing the iterator cancels what is left.
 
@@ -38,8 +41,8 @@ def iter_frames(
         Only these frame numbers of those the recipe chooses.
     workers : int
         Threads that work on frames side by side. Results do not depend on it.
-    scheduler : str, optional
-        Address of a dask scheduler to compute on instead, as ``tcp://host:8786``.
+    client : distributed.Client, optional
+        Compute on this dask cluster instead, as by `connect`.
 
     Yields
     ------
@@ -63,9 +66,37 @@ def iter_frames(
         chosen = set(frames)
         wanted = tuple(frame for frame in wanted if frame in chosen)
     work = partial(measure, planned)
-    if scheduler is not None:
-        return _on_cluster(work, wanted, scheduler)
+    if client is not None:
+        return _on_cluster(work, wanted, client)
     return _in_threads(work, wanted, workers) if workers > 1 else _in_turn(work, wanted)
+
+
+class ClusterError(ValueError):
+    """A dask scheduler that cannot be used; one sentence that says why."""
+
+
+def connect(address: str) -> Client:
+    """Connect to a dask scheduler, as ``tcp://host:8786``; close the client when done.
+
+    Raises
+    ------
+    ClusterError
+        If the package distributed is missing or no scheduler answers.
+    """
+    try:
+        from distributed import Client
+    except ModuleNotFoundError as error:
+        raise ClusterError(
+            f"{address}: computing on a cluster needs {error.name}, which is not installed; run: "
+            "pip install 'hologyre[cluster]'."
+        ) from error
+    try:
+        return Client(address, set_as_default=False)
+    except (OSError, ValueError, ImportError) as error:
+        raise ClusterError(
+            f"{address}: no dask scheduler answers at this address ({error}); give it as "
+            "tcp://host:port."
+        ) from error
 
 
 def _in_turn(work: Callable[[int], FrameResult], frames: Sequence[int]) -> FrameResults:
@@ -84,13 +115,10 @@ def _in_threads(
 
 
 def _on_cluster(
-    work: Callable[[int], FrameResult], frames: Sequence[int], address: str
+    work: Callable[[int], FrameResult], frames: Sequence[int], client: Client
 ) -> FrameResults:
-    from distributed import Client
-
-    with Client(address, set_as_default=False) as client:
-        ahead = 2 * max(1, sum(client.nthreads().values()))
-        yield from _ordered(lambda frame: client.submit(work, frame, pure=False), frames, ahead)
+    ahead = 2 * max(1, sum(client.nthreads().values()))
+    yield from _ordered(lambda frame: client.submit(work, frame, pure=False), frames, ahead)
 
 
 def _ordered(submit: Callable[[int], Any], frames: Sequence[int], ahead: int) -> FrameResults:

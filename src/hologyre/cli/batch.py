@@ -5,11 +5,111 @@ from __future__ import annotations
 import csv
 import io
 from collections.abc import Sequence
+from contextlib import nullcontext
+from dataclasses import dataclass
 from pathlib import Path
+from typing import TYPE_CHECKING
 
-from hologyre.results import RunSummary, write_whole
+import typer
+import xarray as xr
+
+from hologyre.analyse import connect
+from hologyre.cli.faults import DONE, INTERRUPTED, UNUSABLE, complain, is_expected
+from hologyre.cli.progress import Progress
+from hologyre.recipe import Recipe
+from hologyre.report import overview_png
+from hologyre.results import Existing, RunSummary, default_folder, run, write_whole
+from hologyre.stacks import StackError, open_stack
+
+if TYPE_CHECKING:
+    from distributed import Client
 
 _COUNTS = ("frames", "done", "skipped", "singularities", "tracks", "events")
+
+Failures = list[tuple[str, str]]
+
+
+@dataclass(frozen=True)
+class Options:
+    """What holds for all stacks of a command."""
+
+    existing: Existing
+    workers: int
+    scheduler: str | None
+    keep_fields: bool
+
+
+def run_all(
+    sources: Sequence[str], out: Path | None, recipe: Recipe | None, options: Options
+) -> int:
+    """Run stack after stack and return the command's status.
+
+    One stack that cannot be used must not cost the others: it is told, listed and passed
+    over. Alone, its error is raised.
+    """
+    opened, failures = _open(sources)
+    places = [default_folder(stack) for stack in opened]
+    if out is not None:
+        names = [stack.attrs["name"] for stack in opened]
+        places = [out] if len(sources) == 1 else folders(names, out)
+    summaries: list[RunSummary] = []
+    with nullcontext() if options.scheduler is None else connect(options.scheduler) as client:
+        for stack, folder in zip(opened, places, strict=True):
+            try:
+                summary = _run(stack, folder, recipe, options, client)
+            except ValueError as error:
+                if len(sources) == 1 or not is_expected(error):
+                    raise
+                failures.append((stack.attrs["name"], str(error)))
+                complain(str(error))
+                continue
+            summaries.append(summary)
+            if summary.status == "interrupted":
+                break
+    if len(sources) > 1 and out is not None and summaries:
+        typer.echo(f"summary: {write_summary(out, summaries, failures)}")
+    if summaries and summaries[-1].status == "interrupted":
+        return INTERRUPTED
+    return UNUSABLE if failures else DONE
+
+
+def _open(sources: Sequence[str]) -> tuple[list[xr.DataArray], Failures]:
+    opened: list[xr.DataArray] = []
+    failures: Failures = []
+    for source in sources:
+        try:
+            opened.append(open_stack(source))
+        except StackError as error:
+            if len(sources) == 1:
+                raise
+            failures.append((source, str(error)))
+            complain(str(error))
+    return opened, failures
+
+
+def _run(
+    stack: xr.DataArray,
+    folder: Path,
+    recipe: Recipe | None,
+    options: Options,
+    client: Client | None,
+) -> RunSummary:
+    with Progress(stack.attrs["name"]) as progress:
+        summary = run(
+            stack,
+            folder,
+            recipe,
+            existing=options.existing,
+            workers=options.workers,
+            client=client,
+            keep_fields=options.keep_fields,
+            progress=progress,
+            draw=overview_png,
+        )
+    typer.echo(tell(summary))
+    for warning in summary.warnings:
+        complain(f"{summary.name}: {warning}")
+    return summary
 
 
 def folders(names: Sequence[str], out: Path) -> list[Path]:

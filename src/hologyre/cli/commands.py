@@ -10,7 +10,7 @@ from typing import TYPE_CHECKING, Annotated
 
 import typer
 
-from hologyre.cli.faults import INTERRUPTED, UNUSABLE, UsageFault, complain, is_expected
+from hologyre.cli.faults import UsageFault
 from hologyre.cli.progress import Progress
 
 if TYPE_CHECKING:
@@ -152,11 +152,8 @@ def run_stacks(
     ] = False,
 ) -> None:
     """Analyse stacks: singularities, trajectories, events and an overview figure."""
-    from hologyre.cli.batch import folders, tell, write_summary
+    from hologyre.cli.batch import Options, run_all
     from hologyre.recipe import Recipe
-    from hologyre.report import overview_png
-    from hologyre.results import Existing, default_folder, run
-    from hologyre.stacks import StackError, open_stack
 
     if replace and resume:
         raise UsageFault("--replace and --resume exclude each other; give one of them.")
@@ -165,56 +162,13 @@ def run_stacks(
     settings = _load(recipe)
     if frames is not None:
         settings = (settings or Recipe()).with_settings({"stack.frames": frames})
-    existing: Existing = "replace" if replace else "resume" if resume else "refuse"
-    opened, failures = [], []
-    for source in stacks:
-        try:
-            opened.append(open_stack(source))
-        except StackError as error:
-            # one bad stack must not cost the others
-            if len(stacks) == 1:
-                raise
-            failures.append((source, str(error)))
-            complain(str(error))
-    if out is None:
-        places = [default_folder(stack) for stack in opened]
-    elif len(stacks) == 1:
-        places = [out]
-    else:
-        places = folders([stack.attrs["name"] for stack in opened], out)
-    summaries = []
-    for stack, folder in zip(opened, places, strict=True):
-        try:
-            with Progress(stack.attrs["name"]) as progress:
-                summary = run(
-                    stack,
-                    folder,
-                    settings,
-                    existing=existing,
-                    workers=workers or _cores(),
-                    scheduler=scheduler,
-                    keep_fields=keep_fields,
-                    progress=progress,
-                    draw=overview_png,
-                )
-        except ValueError as error:
-            if len(stacks) == 1 or not is_expected(error):
-                raise
-            failures.append((stack.attrs["name"], str(error)))
-            complain(str(error))
-            continue
-        summaries.append(summary)
-        typer.echo(tell(summary))
-        for warning in summary.warnings:
-            complain(f"{summary.name}: {warning}")
-        if summary.status == "interrupted":
-            break
-    if len(stacks) > 1 and out is not None and summaries:
-        typer.echo(f"summary: {write_summary(out, summaries, failures)}")
-    if summaries and summaries[-1].status == "interrupted":
-        raise typer.Exit(INTERRUPTED)
-    if failures:
-        raise typer.Exit(UNUSABLE)
+    options = Options(
+        existing="replace" if replace else "resume" if resume else "refuse",
+        workers=workers or _cores(),
+        scheduler=scheduler,
+        keep_fields=keep_fields,
+    )
+    raise typer.Exit(run_all(stacks, out, settings, options))
 
 
 @app.command()

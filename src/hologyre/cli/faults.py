@@ -18,9 +18,11 @@ def complain(sentence: str) -> None:
 
 def is_expected(error: ValueError) -> bool:
     """Tell whether an error speaks of the input, the recipe or the output folder."""
+    from hologyre.analyse import ClusterError
     from hologyre.recipe import RecipeError
     from hologyre.results import OutputError
     from hologyre.stacks import StackError
     from hologyre.survey import SurveyError
 
-    return isinstance(error, UsageFault | RecipeError | OutputError | StackError | SurveyError)
+    kinds = UsageFault | RecipeError | OutputError | StackError | SurveyError | ClusterError
+    return isinstance(error, kinds)

@@ -34,7 +34,7 @@ class Progress:
         """Show that `done` of `total` are finished."""
         if not sys.stderr.isatty():
             now = time.monotonic()
-            if now - self._told > _EVERY_S:
+            if done and now - self._told > _EVERY_S:
                 self._told = now
                 sys.stderr.write(f"{self._name}: {done} of {total} {self._unit}s\n")
                 sys.stderr.flush()

@@ -10,7 +10,7 @@ from contextlib import suppress
 from dataclasses import dataclass
 from importlib import metadata
 from pathlib import Path
-from typing import Any, Literal
+from typing import TYPE_CHECKING, Any, Literal
 
 import pandas as pd
 import xarray as xr
@@ -32,6 +32,9 @@ from hologyre.results.store import FrameStore, Job, StoredFields
 from hologyre.stacks import fingerprint
 from hologyre.survey import SurveyError, survey
 from hologyre.tables import EVENTS, FRAMES, SINGULARITIES, TRAJECTORIES
+
+if TYPE_CHECKING:
+    from distributed import Client
 
 Progress = Callable[[int, int], None]
 Draw = Callable[[Analysis], bytes]
@@ -81,7 +84,7 @@ def run(
     *,
     existing: Existing = "refuse",
     workers: int = 1,
-    scheduler: str | None = None,
+    client: Client | None = None,
     keep_fields: bool = False,
     progress: Progress | None = None,
     draw: Draw | None = None,
@@ -102,7 +105,7 @@ def run(
         What it leaves "auto", or all, is surveyed.
     existing : "refuse", "replace" or "resume"
         What to do about a run that is in the folder already.
-    workers, scheduler
+    workers, client
         As for `iter_frames`.
     keep_fields : bool
         Write the complex fields too, as ``fields.zarr``.
@@ -135,13 +138,14 @@ def run(
     require_writable(folder)
     store = enter(folder, job, existing)
     surveyed = time.perf_counter()
-    status = _measure(planned, store, workers, scheduler, progress)
+    status = _measure(planned, store, workers, client, progress)
+    if status == "interrupted" and not store.frames():
+        _leave(folder, store)
+        raise KeyboardInterrupt
     measured = time.perf_counter()
     analysis = _collect(planned, store)
     if not analysis.fields and status == "done":
-        store.remove()
-        with suppress(OSError):
-            folder.rmdir()
+        _leave(folder, store)
         reason = analysis.frames["reason"].value_counts().index[0]
         raise SurveyError(
             f"{stack.attrs['name']}: none of its {len(analysis.frames)} frames could be used "
@@ -165,18 +169,25 @@ def run(
     return summary
 
 
+def _leave(folder: Path, store: FrameStore) -> None:
+    """Remove the store, and the folder if nothing else is in it."""
+    store.remove()
+    with suppress(OSError):
+        folder.rmdir()
+
+
 def _measure(
     planned: Plan,
     store: FrameStore,
     workers: int,
-    scheduler: str | None,
+    client: Client | None,
     progress: Progress | None,
 ) -> Status:
     """Measure and keep every frame that is not kept yet."""
     kept = set(store.frames())
     todo = [frame for frame in planned.all_frames if frame not in kept]
     total, finished = len(planned.all_frames), len(planned.all_frames) - len(todo)
-    results = iter_frames(planned, frames=todo, workers=workers, scheduler=scheduler)
+    results = iter_frames(planned, frames=todo, workers=workers, client=client)
     try:
         if progress is not None:
             progress(finished, total)
