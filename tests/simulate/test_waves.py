@@ -1,5 +1,7 @@
 from __future__ import annotations
 
+from collections.abc import Callable
+
 import numpy as np
 import pytest
 
@@ -65,3 +67,21 @@ def test_grid_and_points_give_the_same_field(wave: Wave) -> None:
     at_points = wave.field(y[:, np.newaxis], x[np.newaxis, :], 1.5)
     np.testing.assert_allclose(wave.on_grid(y, x, 1.5), at_points, atol=1e-12)
     assert wave.on_frame((4, 5), 0.0).shape == (4, 5)
+
+
+@pytest.mark.parametrize(
+    ("make", "message"),
+    [
+        (lambda: ThreeWaves(0.0), r"wavelength_px: expected a positive number, got 0\.0"),
+        (lambda: BesselVortex(1, -3.0, (0, 0)), "wavelength_px: expected a positive number"),
+        (lambda: HalfPlane(20.0, (0, 0), "TE"), "polarisation: expected E or H, got 'TE'"),  # type: ignore[arg-type]
+        (lambda: VortexBeam(0.0, (0, 0)), r"waist_px: expected a positive number, got 0\.0"),
+        (
+            lambda: VortexBeam(9.0, (0, 0), ((1.0, 2.0), (1.0,))),
+            r"coefficients: expected rows of one length, got lengths \[2, 1\]",
+        ),
+    ],
+)
+def test_wrong_settings_are_named(make: Callable[[], Wave], message: str) -> None:
+    with pytest.raises(ValueError, match=message):
+        make()

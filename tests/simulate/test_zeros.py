@@ -6,7 +6,7 @@ import pytest
 
 from hologyre.grid import Window
 from hologyre.simulate.truth import TruthError, border_winding, find_zeros
-from hologyre.simulate.waves import RandomWaves, VortexBeam
+from hologyre.simulate.waves import RandomWaves, ThreeWaves, VortexBeam
 
 
 def test_zeros_of_a_beam_are_where_they_were_put() -> None:
@@ -66,3 +66,9 @@ def test_a_zero_on_the_border_has_no_winding() -> None:
     beam = VortexBeam.hosting([(0.0, 30.0)], waist_px=50, centre_px=(50, 50))
     with pytest.raises(TruthError, match="a zero lies on the closed line at t = 0"):
         border_winding(beam, Window(0.0, 100.0, 0.0, 100.0))
+
+
+def test_a_line_of_zeros_is_refused() -> None:
+    # Two plane waves alone vanish along lines.
+    with pytest.raises(TruthError, match="at t = 0"):
+        find_zeros(ThreeWaves(24.0, third=0.0), Window(0.1, 60.3, 0.2, 70.0))
