@@ -14,7 +14,7 @@ from hologyre.analyse.planning import Plan
 from hologyre.fields.carrier import NoFringes, find_carrier
 from hologyre.fields.demodulate import demodulate
 from hologyre.fields.interpolate import evaluate
-from hologyre.fields.noise import field_noise
+from hologyre.fields.noise import NoiseMap, field_noise
 from hologyre.grid import Field, Window
 from hologyre.singularities.locate import locate_singularities
 from hologyre.stacks import StackError
@@ -74,21 +74,14 @@ def measure(plan: Plan, frame: int) -> FrameResult:
     if fault:
         return _skipped(plan, frame, fault.reason, known)
     field = _field(plan, counts)
-    settings = plan.recipe.field
-    noise = field_noise(
-        without_gaps(counts),
-        plan.carrier,
-        edges="plain" if settings.edges == "fit" else settings.edges,
-        window=settings.window,
-        blanks=plan.blanks,
-        valid=finite_pixels(counts),
-        saturation=_level(plan),
-    )
+    noise = _noise(plan, counts)
     power = mean_power(field)
-    known["noise"] = noise.rms
     known["visibility"] = 2 * power**0.5 / float(np.nanmean(counts, dtype=np.float64))
-    if power < _FAINT_POWER * noise.rms**2:
-        return _skipped(plan, frame, "no fringes: the sideband is no stronger than noise", known)
+    if noise is not None:
+        known["noise"] = noise.rms
+        if power < _FAINT_POWER * noise.rms**2:
+            reason = "no fringes: the sideband is no stronger than noise"
+            return _skipped(plan, frame, reason, known)
     if known["visibility"] < _FAINT_VISIBILITY:
         found = find_carrier(without_gaps(counts), radius=plan.carrier.radius)
         if isinstance(found, NoFringes):
@@ -125,6 +118,23 @@ def _field(plan: Plan, counts: NDArray[Any]) -> Field:
         valid=finite_pixels(counts),
         saturation=_level(plan),
     )
+
+
+def _noise(plan: Plan, counts: NDArray[Any]) -> NoiseMap | None:
+    settings = plan.recipe.field
+    try:
+        return field_noise(
+            counts,
+            plan.carrier,
+            edges=settings.edges,
+            window=settings.window,
+            blanks=plan.blanks,
+            valid=finite_pixels(counts),
+            saturation=_level(plan),
+        )
+    except ValueError:
+        # the band takes up the whole spectrum: nowhere is there noise alone
+        return None
 
 
 def _level(plan: Plan) -> float:
