@@ -112,8 +112,8 @@ def test_time_reversal_turns_deaths_into_births_and_exits_into_entries():
     for k in range(30):
         y, x = rng.uniform(0, 200, 2)
         charge = 1 if k % 2 else -1
-        for f in range(*sorted(rng.integers(0, 12, 2))):
-            rows.append((f, y + 0.2 * f, x, charge))
+        life = range(*sorted(rng.integers(0, 12, 2)))
+        rows += [(f, y + 0.2 * f, x, charge) for f in life]
     forward = table(*rows)
     backward = forward.assign(frame=11 - forward["frame"])
     options = {"max_step_px": 5.0, "frame_shape": (200, 200), "frames": range(12)}

@@ -4,13 +4,14 @@ from __future__ import annotations
 
 import itertools
 from dataclasses import dataclass
-from typing import Literal
+from typing import Literal, Self
 
 import numpy as np
 import pandas as pd
 from numpy.typing import ArrayLike, NDArray
 from scipy.spatial import cKDTree
 
+from hologyre.grid import Window
 from hologyre.motion.endings import Ledger
 from hologyre.motion.matching import cheapest_matching
 from hologyre.motion.steps import StepLaw
@@ -105,24 +106,22 @@ def searched_frames(table: pd.DataFrame, frames: ArrayLike | None) -> NDArray[np
     return searched
 
 
-def border_of(
-    table: pd.DataFrame, frame_shape: tuple[int, int] | None, margin_px: float
-) -> tuple[float, float, float, float]:
-    """Return (y_min, y_max, x_min, x_max) of the rectangle that was searched."""
+def border_of(table: pd.DataFrame, frame_shape: tuple[int, int] | None, margin_px: float) -> Window:
+    """Return the rectangle that was searched."""
     if frame_shape is not None:
         ny, nx = frame_shape
         if ny < 1 or nx < 1:
             raise ValueError(f"frame_shape: expected two positive numbers, got {frame_shape!r}")
-        return margin_px, ny - 1.0 - margin_px, margin_px, nx - 1.0 - margin_px
+        return Window(margin_px, ny - 1.0 - margin_px, margin_px, nx - 1.0 - margin_px)
     if len(table) == 0:
-        return 0.0, 0.0, 0.0, 0.0
+        return Window(0.0, 0.0, 0.0, 0.0)
     y, x = table["y_px"], table["x_px"]
-    return float(y.min()), float(y.max()), float(x.min()), float(x.max())
+    return Window(float(y.min()), float(y.max()), float(x.min()), float(x.max()))
 
 
 def step_law(
     table: pd.DataFrame,
-    border: tuple[float, float, float, float],
+    border: Window,
     max_step_px: float | Literal["auto"],
 ) -> tuple[StepLaw, float]:
     """Return the law of steps and the longest step, both from the table itself.
@@ -132,7 +131,7 @@ def step_law(
     """
     frame = table["frame"].to_numpy()
     n_frames = max(len(np.unique(frame)), 1)
-    area = max((border[1] - border[0]) * (border[3] - border[2]), 1.0)
+    area = max((border.y_max - border.y_min) * (border.x_max - border.x_min), 1.0)
     density = max(len(table) / 2.0, 1.0) / n_frames / area
     spacing = 1.0 / np.sqrt(density)
     reach = spacing if max_step_px == "auto" else float(max_step_px)
@@ -198,7 +197,7 @@ def near(
 
 
 @dataclass(frozen=True)
-class _Zeros:
+class Zeros:
     """The columns an assignment needs, one entry a row."""
 
     frame: NDArray[np.int64]
@@ -207,25 +206,32 @@ class _Zeros:
     to_border: NDArray[np.float64]
     vanishing: NDArray[np.float64]
 
+    @classmethod
+    def of(cls, table: pd.DataFrame, law: StepLaw, border: Window) -> Self:
+        """Take them from a `checked` table."""
+        position = table[["y_px", "x_px"]].to_numpy()
+        y, x = position.T
+        return cls(
+            frame=table["frame"].to_numpy(),
+            position=position,
+            charge=table["charge"].to_numpy(),
+            to_border=np.minimum.reduce(
+                [y - border.y_min, border.y_max - y, x - border.x_min, border.x_max - x]
+            ),
+            vanishing=law.vanishing(table["robustness_snr"].to_numpy()),
+        )
+
 
 def assign(
     table: pd.DataFrame,
     law: StepLaw,
     reach: float,
     max_gap: int,
-    border: tuple[float, float, float, float],
+    border: Window,
     searched: NDArray[np.int64],
 ) -> Links:
     """Link all rows of a `checked` table, frame by frame."""
-    position = table[["y_px", "x_px"]].to_numpy()
-    y, x = position.T
-    zeros = _Zeros(
-        frame=table["frame"].to_numpy(),
-        position=position,
-        charge=table["charge"].to_numpy(),
-        to_border=np.minimum.reduce([y - border[0], border[1] - y, x - border[2], border[3] - x]),
-        vanishing=law.vanishing(table["robustness_snr"].to_numpy()),
-    )
+    zeros = Zeros.of(table, law, border)
     ledger = Ledger(len(table))
     begin = np.searchsorted(zeros.frame, searched)
     end = np.searchsorted(zeros.frame, searched, side="right")
@@ -238,21 +244,22 @@ def assign(
             tips = rows
             continue
         tips = tips[now - zeros.frame[tips] <= max_gap + 1]
-        a, b = _match(zeros, tips, rows, law, reach, last, now)
+        a, b = match(zeros, tips, rows, law, reach, last, now)
         ledger.record(a, b, zeros.frame[a] == now, zeros.frame[b] == now)
         ledger.close(tips[zeros.frame[tips] == last], rows, last, now)
         tips = np.concatenate([tips[ledger.following[tips] < 0], rows])
     how = np.full(len(table), "", dtype=object)
     later = np.flatnonzero(ledger.previous >= 0)
-    place = np.searchsorted(searched, zeros.frame)
-    step = place[later] - place[ledger.previous[later]]
+    step = zeros.frame[later] - zeros.frame[ledger.previous[later]]
     how[later] = np.where(step > 1, "bridged", "assigned")
     crossed = law.crossing(zeros.to_border, 1.0) < zeros.vanishing
-    return Links(ledger.previous, how, ledger.happenings(table, crossed, reach))
+    ledger.ends.crossed |= crossed
+    ledger.starts.crossed |= crossed
+    return Links(ledger.previous, how, ledger.happenings(table, reach))
 
 
-def _match(
-    zeros: _Zeros,
+def match(
+    zeros: Zeros,
     tips: NDArray[np.int64],
     rows: NDArray[np.int64],
     law: StepLaw,

@@ -2,9 +2,6 @@
 
 from __future__ import annotations
 
-from dataclasses import dataclass
-from typing import Self
-
 import numpy as np
 import pandas as pd
 from numpy.typing import NDArray
@@ -12,18 +9,24 @@ from numpy.typing import NDArray
 from hologyre.motion.tracks import Happening
 
 
-@dataclass(frozen=True)
 class Side:
-    """Ends, or starts, of tracks: for every row the frames around it (-1: none) and a partner."""
+    """Ends, or starts, of tracks; one entry a row.
 
-    before: NDArray[np.int64]
-    after: NDArray[np.int64]
-    partner: NDArray[np.int64]
+    `before` and `after` are the frames around it (-1 where there is none), `partner` the row
+    it happened together with (-1: none), `crossed` whether it was at the border, and
+    `moment` its (y_px, x_px, frame) where these are known better than from the rows.
+    """
 
-    @classmethod
-    def blank(cls, rows: int) -> Self:
-        """Return a side on which nothing has happened."""
-        return cls(*(np.full(rows, -1, dtype=np.int64) for _ in range(3)))
+    def __init__(self, rows: int) -> None:
+        self.before = np.full(rows, -1, dtype=np.int64)
+        self.after = np.full(rows, -1, dtype=np.int64)
+        self.partner = np.full(rows, -1, dtype=np.int64)
+        self.crossed = np.zeros(rows, dtype=np.bool_)
+        self.moment = np.full((rows, 3), np.nan)
+
+    def between(self, rows: NDArray[np.int64], last: int, now: int) -> None:
+        """Note the frames around the ends (or starts) of these rows."""
+        self.before[rows], self.after[rows] = last, now
 
 
 class Ledger:
@@ -32,8 +35,8 @@ class Ledger:
     def __init__(self, rows: int) -> None:
         self.previous = np.full(rows, -1, dtype=np.int64)
         self.following = np.full(rows, -1, dtype=np.int64)
-        self.ends = Side.blank(rows)
-        self.starts = Side.blank(rows)
+        self.ends = Side(rows)
+        self.starts = Side(rows)
 
     def record(
         self,
@@ -53,24 +56,11 @@ class Ledger:
 
     def close(self, tips: NDArray[np.int64], rows: NDArray[np.int64], last: int, now: int) -> None:
         """Note which tips of the frame `last` ended and which rows of `now` began."""
-        ended = tips[self.following[tips] < 0]
-        self.ends.before[ended], self.ends.after[ended] = last, now
-        begun = rows[self.previous[rows] < 0]
-        self.starts.before[begun], self.starts.after[begun] = last, now
+        self.ends.between(tips[self.following[tips] < 0], last, now)
+        self.starts.between(rows[self.previous[rows] < 0], last, now)
 
-    def happenings(
-        self, table: pd.DataFrame, crossed: NDArray[np.bool_], reach: float
-    ) -> list[Happening]:
-        """Return all events.
-
-        Parameters
-        ----------
-        table : DataFrame
-        crossed : (row,) bool array
-            Whether a crossing of the border explains a lone end of this row best.
-        reach : float
-            How far apart the parts of a split or a merger may lie, px.
-        """
+    def happenings(self, table: pd.DataFrame, reach: float) -> list[Happening]:
+        """Return all events; parts of a split or a merger lie within `reach`, px."""
         position = table[["y_px", "x_px"]].to_numpy()
         charge = table["charge"].to_numpy()
         found: list[Happening] = []
@@ -86,7 +76,7 @@ class Ledger:
                 if partner >= 0 and lonely[partner]:
                     if row < partner:
                         found.append(_happening(kinds[0], side, (row, partner), position))
-                elif crossed[row]:
+                elif side.crossed[row]:
                     found.append(_happening(kinds[1], side, (row,), position))
                 else:
                     rest.append(row)
@@ -107,7 +97,10 @@ def _happening(
 ) -> Happening:
     y, x = position[list(rows)].mean(axis=0)
     before, after = int(side.before[rows[0]]), int(side.after[rows[0]])
-    return Happening(kind, before, after, float(y), float(x), rows)
+    known_y, known_x, at_frame = side.moment[rows[0]]
+    if np.isfinite(at_frame):
+        y, x = known_y, known_x
+    return Happening(kind, before, after, float(y), float(x), rows, float(at_frame))
 
 
 def _parted(
