@@ -17,10 +17,13 @@ _OVERSAMPLED = 0.2
 _AROUND = 24
 """Samples taken beyond the place asked for, so that it is interpolated well."""
 
-_FINE = 32
+_FINE = 20
 """Points per shortest wavelength at which turns are counted."""
 
-_NEWTON_STEPS = 6
+_NEWTON_STEPS = 5
+
+_STARTS = 4
+"""Cells, and weak places, nearest to the click from which zeros are gone to."""
 
 
 @dataclass(frozen=True)
@@ -106,6 +109,7 @@ def snap(
         zeros = _in_series(field, y_px, x_px, within_px)
     distance = np.hypot(zeros.y_px - y_px, zeros.x_px - x_px)
     usable = grid.valid.contains(zeros.y_px, zeros.x_px) & (distance <= within_px)
+    usable &= zeros.charge != 0
     if not usable.any():
         return NoZero(
             f"The field has no zero within {within_px:.1f} px of (y={y_px:.1f}, x={x_px:.1f})."
@@ -164,26 +168,58 @@ def _in_series(field: Field, y_px: float, x_px: float, within_px: float) -> _Zer
     patch = weights_y @ field.values @ weights_x.T
     along_y = np.angle(patch[1:] * patch[:-1].conj())
     along_x = np.angle(patch[:, 1:] * patch[:, :-1].conj())
+    side = y[1] - y[0]
     turn = along_x[:-1] + along_y[:, 1:] - along_x[1:] - along_y[:, :-1]
     turns = np.rint(turn / (2 * np.pi)).astype(np.int64)
-    j, i = np.nonzero(turns)
-    side = y[1] - y[0]
-    start_y, start_x = y[j] + side / 2, x[i] + side / 2
-    at_y, at_x = start_y.copy(), start_x.copy()
+    j, i = _nearest(y - y_px + side / 2, x - x_px + side / 2, *np.nonzero(turns))
+    # two zeros within a cell turn nothing around it, but the field is weak there
+    weak_j, weak_i = _nearest(y - y_px, x - x_px, *_local_minima(np.abs(patch)))
+    start_y = np.concatenate([y[j] + side / 2, y[weak_j]])
+    start_x = np.concatenate([x[i] + side / 2, x[weak_i]])
+    known = np.concatenate([turns[j, i], np.zeros_like(weak_j)])
+    at_y, at_x, sign, arrived = _newton(field, start_y, start_x, side)
+    charge = np.where(arrived & (np.abs(known) <= 1), sign, known)
+    return _Zeros(at_y, at_x, charge)
+
+
+def _nearest(
+    y: NDArray[np.float64], x: NDArray[np.float64], j: NDArray[np.int64], i: NDArray[np.int64]
+) -> tuple[NDArray[np.int64], NDArray[np.int64]]:
+    """Return the few nodes (j, i) nearest to the origin of y and x."""
+    order = np.argsort(np.hypot(y[j], x[i]))[:_STARTS]
+    return j[order], i[order]
+
+
+def _local_minima(size: NDArray[np.floating]) -> tuple[NDArray[np.int64], NDArray[np.int64]]:
+    """Return the inner points that none of their four neighbours is below."""
+    inner = size[1:-1, 1:-1]
+    least = np.minimum.reduce([size[:-2, 1:-1], size[2:, 1:-1], size[1:-1, :-2], size[1:-1, 2:]])
+    j, i = np.nonzero(inner <= least)
+    return j + 1, i + 1
+
+
+def _newton(
+    field: Field, y_px: NDArray[np.float64], x_px: NDArray[np.float64], side_px: float
+) -> tuple[NDArray[np.float64], NDArray[np.float64], NDArray[np.int64], NDArray[np.bool_]]:
+    """Go to the zeros near some points; return them, the sign of det J, and who arrived."""
+    y, x = y_px.copy(), x_px.copy()
+    count = len(y)
+    det = length = np.ones(count)
     for _ in range(_NEWTON_STEPS):
-        (wy, dy), (wx, dx) = _weights(field, 0, at_y), _weights(field, 1, at_x)
-        rows = wy @ field.values
-        value = np.einsum("pk,pk->p", rows, wx)
-        slope_x = np.einsum("pk,pk->p", rows, dx)
-        slope_y = np.einsum("pk,pk->p", dy @ field.values, wx)
-        det = (slope_x.conj() * slope_y).imag
+        (wy, dy), (wx, dx) = _weights(field, 0, y), _weights(field, 1, x)
+        rows = np.concatenate([wy, dy]) @ field.values
+        value = np.einsum("pk,pk->p", rows[:count], wx)
+        along_x = np.einsum("pk,pk->p", rows[:count], dx)
+        along_y = np.einsum("pk,pk->p", rows[count:], wx)
+        det = (along_x.conj() * along_y).imag
         with np.errstate(divide="ignore", invalid="ignore"):
-            step_y = -(slope_x.conj() * value).imag / det
-            step_x = (slope_y.conj() * value).imag / det
-        # a step out of the neighbourhood of its cell is not to be trusted
-        sane = np.hypot(at_y + step_y - start_y, at_x + step_x - start_x) < 2 * side
-        at_y, at_x = at_y + np.where(sane, step_y, 0.0), at_x + np.where(sane, step_x, 0.0)
-    return _Zeros(at_y, at_x, turns[j, i])
+            step_y = -(along_x.conj() * value).imag / det
+            step_x = (along_y.conj() * value).imag / det
+        length = np.hypot(step_y, step_x)
+        # a step out of the neighbourhood of the start is not to be trusted
+        sane = np.hypot(y + step_y - y_px, x + step_x - x_px) < 2 * side_px
+        y, x = y + np.where(sane, step_y, 0.0), x + np.where(sane, step_x, 0.0)
+    return y, x, np.sign(det).astype(np.int64), length < 1e-2 * side_px
 
 
 def _weights(
