@@ -164,7 +164,8 @@ class Display:
                 self._viewer.layers.remove(layer)
                 continue
             if role == "tracks":
-                layer.graph = {}
+                _replace_tracks(layer, data, options)
+                continue
             layer.data = data
             for name, value in options.items():
                 setattr(layer, name, value)
@@ -199,13 +200,23 @@ class Display:
             if role == "wavevectors":
                 layer.data = np.empty((0, 2, 2)) if data is None else data
                 continue
-            layer.data = []
-            if data:
-                width, colour = layer.current_edge_width, layer.current_edge_color
-                layer.add_paths(data, edge_width=width, edge_color=colour)
+            # one assignment, since each redraws; new paths take the layer's current colour
+            paths = data or []
+            layer.data = (paths, ["path"] * len(paths)) if paths else []
 
     def _follow_removal(self, event: Any) -> None:
         if session_of(event.value) is self._session and not self._layers():
             self._ahead.stop()
             if self._session.task is not None:
                 self._session.task.cancel()
+
+
+def _replace_tracks(layer: Layer, data: Any, options: dict[str, Any]) -> None:
+    """Give tracks other data; new data drop features and graph, and with them the colouring."""
+    colour_by = layer.color_by
+    layer.color_by = "track_id"
+    layer.graph = {}
+    layer.data = data
+    layer.features = options["features"]
+    layer.graph = options["graph"]
+    layer.color_by = colour_by

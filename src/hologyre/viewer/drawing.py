@@ -42,18 +42,20 @@ def contrast(session: Session, recipe: Recipe, role: Role, frame: int) -> dict[s
 def table(session: Session, role: Role) -> tuple[NDArray[np.float64], dict[str, Any]]:
     """Return data and options of a layer made of a table."""
     tables = session.tables
+    if role == "tracks":
+        data, features, graph = tracks_from_trajectories(tables.trajectories, tables.events)
+        # tracks can be coloured by numbers only
+        numbers = features.select_dtypes("number")
+        return data, {"features": numbers, "graph": graph, "color_by": "charge"}
     if role == "singularities":
         data, features = points_from_singularities(tables.singularities)
-        return data, {
-            "features": features,
-            "face_color": charge_colours(features["charge"]),
-            "symbol": charge_symbols(features["charge"]),
-        }
-    if role == "events":
+        charge = features["charge"]
+        looks = {"face_color": charge_colours(charge), "symbol": charge_symbols(charge)}
+    else:
         data, features = points_from_events(tables.events)
-        return data, {"features": features, "symbol": event_symbols(features["kind"])}
-    data, features, graph = tracks_from_trajectories(tables.trajectories, tables.events)
-    return data, {"features": _numbers(features), "graph": graph, "color_by": "charge"}
+        looks = {"symbol": event_symbols(features["kind"])}
+    # napari takes no looks point by point where there are no points
+    return data, {"features": features, **(looks if len(data) else {})}
 
 
 def cuts(session: Session, recipe: Recipe, frame: int) -> list[NDArray[np.float64]] | None:
@@ -72,8 +74,3 @@ def arrows(session: Session, recipe: Recipe, frame: int) -> NDArray[np.float64] 
     if isinstance(found, Skipped):
         return np.empty((0, 2, 2))
     return vectors_from_wavevector(found)
-
-
-def _numbers(features: Any) -> Any:
-    """Keep the numeric columns, the only ones tracks can be coloured by."""
-    return features.select_dtypes("number")

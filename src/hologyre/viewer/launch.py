@@ -89,6 +89,7 @@ def show_tables(session: Session, tables: Tables) -> None:
     if session.display is not None:
         session.display.show("phase", "singularities", "tracks")
 
+
 def _fit_tabs(viewer: Viewer) -> None:
     """Give the tabs of the docks room for their whole titles."""
     dock, _ = viewer.window.add_plugin_dock_widget(PLUGIN, OVERVIEW, tabify=True)

@@ -111,7 +111,7 @@ def points_from_events(events: pd.DataFrame) -> tuple[NDArray[np.float64], pd.Da
 
 
 def vectors_from_wavevector(
-    wavevector: NDArray[np.floating], *, spacing_px: int = 16
+    wavevector: NDArray[np.floating], *, along_side: int = 24
 ) -> NDArray[np.float64]:
     """Return arrows of the local wavevector on a coarse grid.
 
@@ -119,9 +119,10 @@ def vectors_from_wavevector(
     ----------
     wavevector : (2, y, x) array
         (ky, kx) in rad/px on the hologram's pixels.
-    spacing_px : int
-        Distance between arrows. The 95th percentile of their lengths is made to fit it; what is
-        longer, as happens next to a singularity, is cut to 1.5 times that.
+    along_side : int
+        Number of arrows along the longer side. Half of the arrows are shorter than half their
+        distance; none is drawn longer than the distance, since next to a singularity the
+        wavevector has no bound.
 
     Returns
     -------
@@ -130,17 +131,17 @@ def vectors_from_wavevector(
         are left out.
     """
     _, ny, nx = wavevector.shape
-    rows = np.arange(spacing_px // 2, ny, spacing_px)
-    columns = np.arange(spacing_px // 2, nx, spacing_px)
+    spacing = max(4, round(max(ny, nx) / along_side))
+    rows, columns = np.arange(spacing // 2, ny, spacing), np.arange(spacing // 2, nx, spacing)
     arrows = np.moveaxis(wavevector[:, rows[:, None], columns], 0, -1).reshape(-1, 2)
     origins = np.stack(np.meshgrid(rows, columns, indexing="ij"), -1).reshape(-1, 2)
     finite = np.isfinite(arrows).all(axis=1)
     arrows, origins = arrows[finite].astype(np.float64), origins[finite].astype(np.float64)
     length = np.hypot(arrows[:, 0], arrows[:, 1])
-    typical = np.percentile(length, 95) if len(length) else 0.0
-    if typical > 0:
-        fitted = np.minimum(length / typical, 1.5) * spacing_px
-        arrows *= (fitted / np.maximum(length, np.finfo(float).tiny))[:, None]
+    middle = np.median(length) if len(length) else 0.0
+    if middle > 0:
+        drawn = np.minimum(length / middle * spacing / 2, spacing)
+        arrows *= (drawn / np.maximum(length, np.finfo(float).tiny))[:, None]
     return np.stack([origins, arrows], axis=1)
 
 

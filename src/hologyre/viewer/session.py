@@ -101,13 +101,13 @@ class Session:
     @property
     def optics(self) -> Optics:
         """What is known of the optics, from the recipe or else from the file."""
+        told = self._recipe.optics
+        by_lens = told.camera_pixel_um is not None and told.magnification is not None
         settings = {
-            f"optics.{name}": self.stack.attrs.get(name)
+            f"optics.{name}": self.stack.attrs.get(name) or "unknown"
             for name in ("pixel_um", "frame_interval_s")
-            if getattr(self._recipe.optics, name) == "auto"
+            if getattr(told, name) == "auto" and not (name == "pixel_um" and by_lens)
         }
-        if self._recipe.optics.camera_pixel_um and self._recipe.optics.magnification:
-            settings.pop("optics.pixel_um", None)
         return self._recipe.with_settings(settings).optics.values()
 
 

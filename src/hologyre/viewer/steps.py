@@ -11,13 +11,14 @@ import pandas as pd
 
 from hologyre.analyse import Plan, frame_table, iter_frames, join_singularities, link
 from hologyre.analyse.frame import FrameResult
+from hologyre.grid import Field
 from hologyre.motion import Motion
 from hologyre.recipe import Recipe
 from hologyre.survey import survey
 from hologyre.tables import EVENTS, TRAJECTORIES, empty
 from hologyre.viewer.session import Session, Tables
 from hologyre.viewer.styles import Role
-from hologyre.viewer.worker import Task, Work
+from hologyre.viewer.worker import Cancelled, Task, Work
 
 _REDRAW_S = 0.7
 _THREADS = max(1, min(4, (os.cpu_count() or 2) - 1))
@@ -32,7 +33,10 @@ def find_carrier(session: Session) -> None:
         yield
         return survey(session.stack, anew)
 
-    _start(session, "Finding the carrier", work, on_done=lambda r: _set_recipe(session, r))
+    def done(recipe: Recipe) -> None:
+        session.recipe = recipe
+
+    _start(session, "Finding the carrier", work, on_done=done)
 
 
 def show_pictures(session: Session, *roles: Role) -> None:
@@ -42,19 +46,14 @@ def show_pictures(session: Session, *roles: Role) -> None:
         return
     frame = display.frame
 
-    def work() -> Work[Recipe]:
+    def work() -> Work[None]:
         yield
         recipe = yield from _decide(session)
         for role in roles:
             session.maps.prepare(role, recipe, frame)
             yield
-        return recipe
 
-    def done(recipe: Recipe) -> None:
-        _set_recipe(session, recipe)
-        display.show(*roles)
-
-    _start(session, "Computing fields", work, on_done=done)
+    _start(session, "Computing fields", work, on_done=lambda _: display.show(*roles))
 
 
 def find_singularities(session: Session) -> None:
@@ -94,7 +93,7 @@ def _measure(session: Session, title: str, *, linked: bool) -> None:
         recipe = yield from _decide(session)
         plan = session.maps.plan(recipe)
         tables = (yield from _all_frames(session, plan)) if known is None else known
-        return _linked(plan, tables) if linked else tables
+        return _linked(session, plan, tables) if linked else tables
 
     def step(value: Any) -> None:
         if isinstance(value, Tables):
@@ -102,9 +101,6 @@ def _measure(session: Session, title: str, *, linked: bool) -> None:
             display.show("singularities")
 
     def done(tables: Tables) -> None:
-        recipe = tables.linked_with or tables.found_with
-        if recipe is not None:
-            _set_recipe(session, recipe)
         session.tables = tables
         roles: tuple[Role, ...] = ("singularities", "tracks") if linked else ("singularities",)
         display.show(*(() if display.shows_picture() else ("phase",)), *roles)
@@ -143,9 +139,10 @@ def _collected(plan: Plan, results: list[FrameResult]) -> Tables:
     )
 
 
-def _linked(plan: Plan, found: Tables) -> Tables:
+def _linked(session: Session, plan: Plan, found: Tables) -> Tables:
     frames = found.frames
-    motion = link(plan, found.singularities, frames.loc[frames["status"] == "done", "frame"])
+    measured = frames.loc[frames["status"] == "done", "frame"].tolist()
+    motion = link(plan, found.singularities, _fields(session, plan, measured), measured)
     return Tables(
         singularities=found.singularities,
         frames=frame_table(_rows(frames), motion),
@@ -156,6 +153,15 @@ def _linked(plan: Plan, found: Tables) -> Tables:
     )
 
 
+def _fields(session: Session, plan: Plan, frames: list[int]) -> Iterator[Field]:
+    for frame in frames:
+        if session.task is not None and session.task.cancelled:
+            raise Cancelled
+        field = session.maps.field(plan.recipe, frame)
+        if isinstance(field, Field):
+            yield field
+
+
 def _rows(frames: pd.DataFrame) -> Iterator[dict[str, Any]]:
     return (dict(zip(frames.columns, row, strict=True)) for row in frames.itertuples(index=False))
 
@@ -164,7 +170,7 @@ def _decide(session: Session) -> Work[Recipe]:
     recipe = session.recipe
     if recipe.undecided():
         recipe = survey(session.stack, recipe)
-        yield
+        yield recipe
     return recipe
 
 
@@ -173,10 +179,6 @@ def _found_key(recipe: Recipe) -> Recipe:
     plain = Recipe()
     stack = recipe.stack.model_copy(update={"notes": ""})
     return recipe.model_copy(update={"stack": stack, "phase": plain.phase, "motion": plain.motion})
-
-
-def _set_recipe(session: Session, recipe: Recipe) -> None:
-    session.recipe = recipe
 
 
 def _start(
@@ -188,9 +190,15 @@ def _start(
     on_step: Callable[[Any], None] | None = None,
     on_done: Callable[[Any], None] | None = None,
 ) -> None:
+    def step(value: Any) -> None:
+        if isinstance(value, Recipe):
+            session.recipe = value
+        elif on_step is not None:
+            on_step(value)
+
     def end() -> None:
         session.task = None
 
-    task = Task(title, work, total=total, on_step=on_step, on_done=on_done, on_end=end)
+    task = Task(title, work, total=total, on_step=step, on_done=on_done, on_end=end)
     session.task = task
     task.start()

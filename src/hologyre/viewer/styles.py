@@ -44,18 +44,16 @@ STYLES: dict[Role, Style] = {
             "interpolation2d": "nearest",
         },
     ),
-    "unwrapped": Style(
-        "unwrapped", "image", {"colormap": "viridis", "interpolation2d": "nearest"}
-    ),
+    "unwrapped": Style("unwrapped", "image", {"colormap": "viridis", "interpolation2d": "nearest"}),
     "cuts": Style(
         "cuts",
         "shapes",
-        {"edge_color": CUT, "face_color": "transparent", "edge_width": 1.2, "opacity": 1.0},
+        {"edge_color": CUT, "face_color": "transparent", "edge_width": 1.0, "opacity": 1.0},
     ),
     "wavevectors": Style(
         "wavevectors",
         "vectors",
-        {"edge_color": ARROW, "edge_width": 2.0, "vector_style": "arrow", "opacity": 0.9},
+        {"edge_color": ARROW, "edge_width": 2.0, "vector_style": "triangle", "opacity": 0.9},
     ),
     "singularities": Style(
         "singularities",

@@ -14,6 +14,7 @@ from qtpy.QtWidgets import (
     QFrame,
     QHBoxLayout,
     QLabel,
+    QProgressBar,
     QPushButton,
     QScrollArea,
     QSizePolicy,
@@ -48,10 +49,12 @@ class SessionDock(QWidget):
     action = ""
     action_tip = ""
     needs_session = True
+    has_settings = True
 
     def __init__(self, napari_viewer: Viewer) -> None:
         super().__init__()
-        self.viewer = napari_viewer
+        # plugins get a proxy, whose layers are other objects each time they are asked for
+        self.viewer: Viewer = getattr(napari_viewer, "__wrapped__", napari_viewer)
         self._bound: Session | None = None
         self._header = QLabel()
         self._header.setStyleSheet("font-weight: bold;")
@@ -66,6 +69,7 @@ class SessionDock(QWidget):
         self.action_button.clicked.connect(lambda: self.act())
         self.cancel_button = QPushButton("Cancel")
         self.cancel_button.clicked.connect(self._cancel)
+        self._bar = QProgressBar()
         self.footer = QHBoxLayout()
         self.message = _line()
         self._lay_out()
@@ -124,7 +128,7 @@ class SessionDock(QWidget):
 
     def _lay_out(self) -> None:
         guide = _line(self.help_text)
-        guide.setStyleSheet("color: palette(mid);")
+        guide.setStyleSheet("font-style: italic;")
         scroll = QScrollArea()
         scroll.setWidget(self.body)
         scroll.setWidgetResizable(True)
@@ -138,6 +142,7 @@ class SessionDock(QWidget):
         outer.setSpacing(6)
         for widget in (self._header, guide, self._use, scroll):
             outer.addWidget(widget)
+        outer.addWidget(self._bar)
         outer.addLayout(buttons)
         outer.addLayout(self.footer)
         outer.addWidget(self.message)
@@ -182,8 +187,10 @@ class SessionDock(QWidget):
         session = self._bound
         candidate = candidate_layer(self.viewer) if session is None else None
         self._use.setVisible(candidate is not None)
-        self.body.setEnabled(session is not None and session.task is None)
-        self.cancel_button.setVisible(session is not None and session.task is not None)
+        running = session is not None and session.task is not None
+        self.body.setEnabled(session is not None and not (running and self.has_settings))
+        self._bar.setVisible(running)
+        self.cancel_button.setVisible(running)
         if session is None:
             self._header.setText("No hologram stack selected")
             if candidate is not None:
@@ -192,10 +199,19 @@ class SessionDock(QWidget):
             return
         self._header.setText(session.name)
         if session.task is not None:
-            self._allow(f"{session.task.title} is running")
+            self._allow(f"{session.task.title.lower()}")
+            session.task.stepped.connect(self._show_progress, unique=True)
+            self._show_progress()
         else:
             self._allow(self.blocked(session))
         self.show_session(session)
+
+    def _show_progress(self) -> None:
+        task = self._bound.task if self._bound is not None else None
+        if task is not None:
+            self._bar.setFormat(task.title)
+            self._bar.setRange(0, task.total)
+            self._bar.setValue(task.steps)
 
     def _allow(self, reason: str) -> None:
         """Enable the action, or disable it and tell why."""

@@ -16,6 +16,7 @@ class OverviewDock(SessionDock):
 
     title = "Overview"
     help_text = "Do everything at once here, or step by step in the docks beside this one."
+    has_settings = False
     action = "Analyse whole stack"
     action_tip = (
         "Find the carrier, read every frame, find the singularities and follow them, with the "
