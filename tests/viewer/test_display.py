@@ -152,9 +152,7 @@ def test_pictures_stay_while_the_recipe_is_undecided(open_session: Any) -> None:
     assert np.isfinite(np.asarray(before[3])).all()
 
 
-def test_a_deleted_layer_comes_back_only_when_asked_for(
-    open_session: Any, tables: Tables
-) -> None:
+def test_a_deleted_layer_comes_back_only_when_asked_for(open_session: Any, tables: Tables) -> None:
     viewer, session, display = open_session()
     session.tables = tables
     display.show("phase", "singularities", "tracks", "cuts")
@@ -170,7 +168,7 @@ def test_a_deleted_layer_comes_back_only_when_asked_for(
 
 
 def test_new_tables_replace_what_the_layers_show(open_session: Any, tables: Tables) -> None:
-    viewer, session, display = open_session()
+    _, session, display = open_session()
     session.tables = tables
     display.show("singularities", "tracks", "events")
     session.tables = Tables(

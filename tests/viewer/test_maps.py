@@ -63,9 +63,7 @@ def test_a_field_that_was_analysed_is_not_read_again(
     assert reads == []
 
 
-def test_pictures_are_those_of_the_field_on_the_pixels(
-    stack: xr.DataArray, recipe: Recipe
-) -> None:
+def test_pictures_are_those_of_the_field_on_the_pixels(stack: xr.DataArray, recipe: Recipe) -> None:
     maps = FrameMaps(stack)
     (result,) = iter_frames(stack, recipe, frames=[3])
     assert result.field is not None

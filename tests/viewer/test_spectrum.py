@@ -50,7 +50,9 @@ def view(qtbot: Any) -> SpectrumView:
     return widget
 
 
-def drag(qtbot: Any, view: SpectrumView, start: tuple[float, float], end: tuple[float, float]) -> None:
+def drag(
+    qtbot: Any, view: SpectrumView, start: tuple[float, float], end: tuple[float, float]
+) -> None:
     first, last = (view.position_of(*f).toPoint() for f in (start, end))
     qtbot.mousePress(view, Qt.MouseButton.LeftButton, pos=first)
     qtbot.mouseMove(view, QPoint((first.x() + last.x()) // 2, (first.y() + last.y()) // 2))
