@@ -10,12 +10,21 @@ import numpy as np
 import xarray as xr
 from numpy.typing import NDArray
 
-from hologyre.analyse import FrameResult, Plan, field_of, plan
+from hologyre.analyse import (
+    FrameResult,
+    Inspection,
+    Plan,
+    field_of,
+    inspect,
+    plan,
+    unwrap_field,
+    wrapped_phase,
+)
 from hologyre.fields.carrier import Carrier, find_carrier
 from hologyre.fields.interpolate import on_pixels
 from hologyre.fields.wavevector import local_wavevector
-from hologyre.grid import Field, Window
-from hologyre.phase.unwrap import Unwrapped, unwrap
+from hologyre.grid import Field
+from hologyre.phase.unwrap import Unwrapped
 from hologyre.recipe import Recipe
 from hologyre.viewer.frames import FrameCache
 from hologyre.viewer.spectrum import spectrum_picture
@@ -76,6 +85,10 @@ class FrameMaps:
         """Return what all frames of an analysis share."""
         return self._cache.get(("plan", recipe), lambda: plan(self._stack, recipe))
 
+    def inspection(self, recipe: Recipe, frame: int) -> Inspection | Skipped:
+        """Return how well a frame can be measured, in words."""
+        return self._get("inspection", recipe, frame, self._inspect)
+
     def keep(self, recipe: Recipe, result: FrameResult) -> None:
         """Keep the field of a frame that was analysed, so that it is not read again."""
         if result.field is not None:
@@ -87,13 +100,11 @@ class FrameMaps:
 
     def amplitude(self, recipe: Recipe, frame: int) -> NDArray[np.float32]:
         """Return the field's modulus, counts."""
-        values = self._values(recipe, frame)
-        return self._blank() if isinstance(values, Skipped) else np.abs(values)
+        return self._get("amplitude", recipe, frame, self._amplitude)
 
     def phase(self, recipe: Recipe, frame: int) -> NDArray[np.float32]:
         """Return the wrapped phase, rad."""
-        values = self._values(recipe, frame)
-        return self._blank() if isinstance(values, Skipped) else np.angle(values)
+        return self._get("phase", recipe, frame, self._phase)
 
     def unwrapped(self, recipe: Recipe, frame: int) -> NDArray[np.float32]:
         """Return the unwrapped phase, rad."""
@@ -111,23 +122,21 @@ class FrameMaps:
     def prepare(self, quantity: str, recipe: Recipe, frame: int) -> None:
         """Compute a quantity, so that it is ready when it is asked for."""
         makers: dict[str, Callable[[Recipe, int], object]] = {
+            "amplitude": self.amplitude,
+            "phase": self.phase,
             "spectrum": self.spectrum,
             "carrier": self.carrier,
+            "inspection": self.inspection,
             "unwrapped": self.unwrapping,
             "cuts": self.unwrapping,
             "wavevectors": self.wavevector,
         }
-        makers.get(quantity, self._values)(recipe, frame)
+        makers[quantity](recipe, frame)
 
     def ready(self, quantity: str, recipe: Recipe, frame: int) -> Any | None:
         """Return a quantity if it is computed already, else None."""
         name = {"cuts": "unwrapped", "wavevectors": "wavevector"}.get(quantity, quantity)
-        if name in ("amplitude", "phase"):
-            name = "values"
         return self._cache.peek((name, self.key(name, recipe), frame))
-
-    def _values(self, recipe: Recipe, frame: int) -> NDArray[np.complex64] | Skipped:
-        return self._get("values", recipe, frame, self._on_pixels)
 
     def _find_carrier(self, recipe: Recipe, frame: int) -> Carrier | Skipped:
         radius = recipe.carrier.radius
@@ -141,39 +150,40 @@ class FrameMaps:
             return Skipped(str(error))
         return found if isinstance(found, Carrier) else Skipped(found.reason)
 
+    def _inspect(self, recipe: Recipe, frame: int) -> Inspection | Skipped:
+        try:
+            return inspect(self._stack, recipe, frame=frame)
+        except ValueError as error:
+            return Skipped(str(error))
+
     def _read(self, recipe: Recipe, frame: int) -> Field | Skipped:
         try:
             return field_of(self.plan(recipe), frame)
         except ValueError as error:
             return Skipped(str(error))
 
-    def _on_pixels(self, recipe: Recipe, frame: int) -> NDArray[np.complex64] | Skipped:
+    def _amplitude(self, recipe: Recipe, frame: int) -> NDArray[np.float32]:
         field = self.field(recipe, frame)
         if isinstance(field, Skipped):
-            return field
-        values = on_pixels(field).astype(np.complex64, copy=False)
-        outside = _outside(field)
-        if outside is not None:
-            values[outside] = np.nan
-        return values
+            return self._blank()
+        amplitude = np.abs(on_pixels(field)).astype(np.float32, copy=False)
+        amplitude[~_valid(field)] = np.nan
+        return amplitude
+
+    def _phase(self, recipe: Recipe, frame: int) -> NDArray[np.float32]:
+        field = self.field(recipe, frame)
+        return self._blank() if isinstance(field, Skipped) else wrapped_phase(field)
 
     def _unwrap(self, recipe: Recipe, frame: int) -> Unwrapped | Skipped:
-        values = self._values(recipe, frame)
-        if isinstance(values, Skipped):
-            return values
-        valid = np.isfinite(values)
-        amplitude = np.where(valid, np.abs(values), np.float32(0))
-        weight = amplitude / amplitude.max() if recipe.phase.weight == "amplitude" else None
-        return unwrap(np.angle(values), weight=weight, valid=None if valid.all() else valid)
+        field = self.field(recipe, frame)
+        return field if isinstance(field, Skipped) else unwrap_field(field, recipe.phase)
 
     def _wavevector(self, recipe: Recipe, frame: int) -> NDArray[np.float32] | Skipped:
         field = self.field(recipe, frame)
         if isinstance(field, Skipped):
             return field
         wavevector = local_wavevector(field).astype(np.float32, copy=False)
-        outside = _outside(field)
-        if outside is not None:
-            wavevector[:, outside] = np.nan
+        wavevector[:, ~_valid(field)] = np.nan
         return wavevector
 
     def _get(
@@ -186,11 +196,8 @@ class FrameMaps:
         return np.full(self.shape[1:], np.nan, np.float32)
 
 
-def _outside(field: Field) -> NDArray[np.bool_] | None:
-    """Return the pixels outside the part of a field that was measured, None if there are none."""
+def _valid(field: Field) -> NDArray[np.bool_]:
+    """Return the pixels of the part of a field that was measured."""
     ny, nx = field.grid.frame_shape
-    whole = Window(0.0, ny - 1.0, 0.0, nx - 1.0)
-    if field.grid.valid == whole:
-        return None
-    y, x = np.arange(float(ny))[:, None], np.arange(float(nx))[None, :]
-    return ~field.grid.valid.contains(y, x)
+    y, x = np.arange(ny, dtype=np.float64), np.arange(nx, dtype=np.float64)
+    return field.grid.valid.contains(y[:, None], x)

@@ -29,7 +29,7 @@ from hologyre.viewer.exporting import Table, export_all, export_table
 from hologyre.viewer.opening import candidate_layer, current_session, show_stack, use_layer
 from hologyre.viewer.session import Session
 
-_WARN = "color: #E69F00;"
+WARN = "color: #E69F00;"
 
 
 class SessionDock(QWidget):
@@ -56,10 +56,10 @@ class SessionDock(QWidget):
         # plugins get a proxy, whose layers are other objects each time they are asked for
         self.viewer: Viewer = getattr(napari_viewer, "__wrapped__", napari_viewer)
         self._bound: Session | None = None
-        self._header = QLabel()
-        self._header.setStyleSheet("font-weight: bold;")
-        self._use = QPushButton("Use the selected layer")
-        self._use.clicked.connect(self._use_selected)
+        self.header = QLabel()
+        self.header.setStyleSheet("font-weight: bold;")
+        self.use_button = QPushButton("Use the selected layer")
+        self.use_button.clicked.connect(self._use_selected)
         self.body = QWidget()
         self.rows = QVBoxLayout(self.body)
         self.rows.setContentsMargins(0, 0, 6, 0)
@@ -97,7 +97,7 @@ class SessionDock(QWidget):
     def say(self, text: str, *, warning: bool = False) -> None:
         """Write a sentence under the action."""
         self.message.setText(text)
-        self.message.setStyleSheet(_WARN if warning else "")
+        self.message.setStyleSheet(WARN if warning else "")
         self.message.setVisible(bool(text))
 
     def set_recipe(self, recipe: Recipe) -> None:
@@ -115,15 +115,16 @@ class SessionDock(QWidget):
             do(session)
 
     def event(self, event: QEvent) -> bool:
-        """Let go of viewer and session when the dock is closed, take hold when put back."""
+        """Take a short title when docked; let go of everything when the dock is closed."""
         if event.type() == QEvent.Type.ParentChange:
-            if self.parent() is None:
+            parent = self.parent()
+            if parent is None:
                 self._release()
-            else:
-                self._attach()
-                if isinstance(self.parent(), QDockWidget):
-                    # the tabs of all docks have no room for the plugin's name
-                    self.parent().setWindowTitle(self.title)
+                # napari only forgets what was in a closed dock; Qt would keep it for good
+                self.deleteLater()
+            elif isinstance(parent, QDockWidget):
+                # the tabs of all docks have no room for the plugin's name
+                parent.setWindowTitle(self.title)
         return super().event(event)
 
     def _lay_out(self) -> None:
@@ -140,7 +141,7 @@ class SessionDock(QWidget):
         outer = QVBoxLayout(self)
         outer.setContentsMargins(8, 6, 8, 8)
         outer.setSpacing(6)
-        for widget in (self._header, guide, self._use, scroll):
+        for widget in (self.header, guide, self.use_button, scroll):
             outer.addWidget(widget)
         outer.addWidget(self._bar)
         outer.addLayout(buttons)
@@ -186,18 +187,18 @@ class SessionDock(QWidget):
     def _show(self) -> None:
         session = self._bound
         candidate = candidate_layer(self.viewer) if session is None else None
-        self._use.setVisible(candidate is not None)
+        self.use_button.setVisible(candidate is not None)
         running = session is not None and session.task is not None
         self.body.setEnabled(session is not None and not (running and self.has_settings))
         self._bar.setVisible(running)
         self.cancel_button.setVisible(running)
         if session is None:
-            self._header.setText("No hologram stack selected")
+            self.header.setText("No hologram stack selected")
             if candidate is not None:
-                self._use.setText(f"Use “{candidate.name}” as hologram stack")
+                self.use_button.setText(f"Use “{candidate.name}” as hologram stack")
             self._allow("open a hologram stack, or select its layer, first")
             return
-        self._header.setText(session.name)
+        self.header.setText(session.name)
         if session.task is not None:
             self._allow(f"{session.task.title.lower()}")
             session.task.stepped.connect(self._show_progress, unique=True)

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+from html import escape
 from typing import Any
 
 import numpy as np
@@ -9,10 +10,11 @@ from napari import Viewer
 from qtpy.QtGui import QShowEvent
 from qtpy.QtWidgets import QLabel
 
+from hologyre.analyse import Inspection
 from hologyre.recipe import RecipeError
 from hologyre.viewer import steps
 from hologyre.viewer.ahead import Ahead
-from hologyre.viewer.docks.base import SessionDock, button, side_by_side, titled
+from hologyre.viewer.docks.base import WARN, SessionDock, button, side_by_side, titled
 from hologyre.viewer.forms import RecipeForm, section_paths
 from hologyre.viewer.maps import Skipped
 from hologyre.viewer.session import Session
@@ -42,8 +44,8 @@ class FieldDock(SessionDock):
 
     def __init__(self, napari_viewer: Viewer) -> None:
         self._spectrum = SpectrumView()
-        self._told = QLabel()
-        self._told.setWordWrap(True)
+        self.told = QLabel()
+        self.told.setWordWrap(True)
         self._carrier = RecipeForm(section_paths("carrier"), labels=_LABELS)
         self._field = RecipeForm(section_paths("field", "refocus"), labels=_LABELS)
         self._ahead = Ahead(self._show_spectrum)
@@ -65,7 +67,7 @@ class FieldDock(SessionDock):
         steps.show_pictures(session, "amplitude", "phase")
 
     def _lay_out(self) -> None:
-        find = button(
+        self.find_button = button(
             "Find carrier",
             "Look for the carrier in frames spread through the stack, and put it below.",
             lambda: self.with_session(steps.find_carrier),
@@ -77,8 +79,8 @@ class FieldDock(SessionDock):
         )
         for part in (
             self._spectrum,
-            self._told,
-            side_by_side(find, arrows),
+            self.told,
+            side_by_side(self.find_button, arrows),
             titled("Carrier and band", self._carrier),
             titled("Field", self._field),
         ):
@@ -87,7 +89,7 @@ class FieldDock(SessionDock):
         for form in (self._carrier, self._field):
             form.changed.connect(self.set_recipe)
             form.refused.connect(lambda reason: self.say(reason, warning=True))
-        self._spectrum.band_moved.connect(lambda band: self._told.setText(words_for(band)))
+        self._spectrum.band_moved.connect(lambda band: self.told.setText(words_for(band)))
         self._spectrum.band_chosen.connect(self._choose_band)
         super()._lay_out()
 
@@ -106,13 +108,13 @@ class FieldDock(SessionDock):
         if session is None or session.display is None:
             self._spectrum.show_band(None)
             self._spectrum.show_picture(None, "The spectrum of the hologram comes here.")
-            self._told.setText("")
+            self.told.setText("")
             return
         if not self.isVisible():
             return
         maps, recipe, frame = session.maps, session.recipe, session.display.frame
         self._show_spectrum()
-        wanted = ["spectrum"] if _band(session) else ["spectrum", "carrier"]
+        wanted = ["spectrum", "carrier" if recipe.undecided() else "inspection"]
         self._ahead.ask(
             [
                 lambda name=name: maps.prepare(name, recipe, frame)  # type: ignore[misc]
@@ -132,17 +134,18 @@ class FieldDock(SessionDock):
         band = _band(session)
         if band is not None:
             self._spectrum.show_band(band)
-            self._told.setText(words_for(band))
+            seen = maps.ready("inspection", recipe, frame)
+            self.told.setText(_report(seen) if seen else words_for(band))
             return
         found = maps.ready("carrier", recipe, frame)
         if found is None:
             return
         if isinstance(found, Skipped):
             self._spectrum.show_band(None)
-            self._told.setText(f"No carrier in frame {frame}: {found.reason}.")
+            self.told.setText(f"No carrier in frame {frame}: {found.reason}.")
             return
         self._spectrum.show_band(Band(found.fy, found.fx, found.radius))
-        self._told.setText(
+        self.told.setText(
             f"In frame {frame}: carrier {found.fy:.4f}, {found.fx:.4f} cycles/px, visibility "
             f"{found.visibility:.2f}. " + words_for(Band(found.fy, found.fx, found.radius))
         )
@@ -172,6 +175,12 @@ def words_for(band: Band) -> str:
     if max(abs(band.fy), abs(band.fx)) + band.radius > 0.5:
         told.append("The band is cut off by the end of the spectrum: make it smaller.")
     return " ".join(told)
+
+
+def _report(seen: Inspection) -> str:
+    """Return what was seen in a frame: findings in one line, then warnings."""
+    warnings = "".join(f"<br><span style='{WARN}'>{escape(w)}</span>" for w in seen.warnings)
+    return f"Frame {seen.frame}: {escape(seen.summary())}.{warnings}"
 
 
 def _band(session: Session) -> Band | None:

@@ -35,17 +35,17 @@ class MotionDock(SessionDock):
     action_tip = "Link the singularities of all frames to trajectories; find them first if need be."
 
     def __init__(self, napari_viewer: Viewer) -> None:
-        self._form = RecipeForm(section_paths("motion"), labels=_LABELS)
-        self._told = QLabel()
-        self._told.setWordWrap(True)
+        self.form = RecipeForm(section_paths("motion"), labels=_LABELS)
+        self.told = QLabel()
+        self.told.setWordWrap(True)
         super().__init__(napari_viewer)
 
     def show_session(self, session: Session) -> None:
         """Show the settings and the totals."""
-        self._form.show_recipe(session.recipe)
-        self._told.setText("\n".join(_sentences(session)))
+        self.form.show_recipe(session.recipe)
+        self.told.setText("\n".join(_sentences(session)))
         known = session.tables.linked_with is not None
-        for widget in (self._export, self._export_all, self._events):
+        for widget in (self.export_button, self.export_all_button, self._events):
             widget.setEnabled(known)
 
     def blocked(self, session: Session) -> str:
@@ -62,16 +62,16 @@ class MotionDock(SessionDock):
             "Mark births, deaths, entries and exits as points.",
             lambda: self.with_session(_show_events),
         )
-        self._export = export_button(self, "trajectories")
-        self._export_all = export_all_button(self)
-        for part in (self._form, self._told, self._events):
+        self.export_button = export_button(self, "trajectories")
+        self.export_all_button = export_all_button(self)
+        for part in (self.form, self.told, self._events):
             self.rows.addWidget(part)
         self.rows.addStretch(1)
-        self._form.changed.connect(self.set_recipe)
-        self._form.refused.connect(lambda reason: self.say(reason, warning=True))
+        self.form.changed.connect(self.set_recipe)
+        self.form.refused.connect(lambda reason: self.say(reason, warning=True))
         super()._lay_out()
-        self.footer.addWidget(self._export)
-        self.footer.addWidget(self._export_all)
+        self.footer.addWidget(self.export_button)
+        self.footer.addWidget(self.export_all_button)
 
 
 def _show_events(session: Session) -> None:

@@ -33,7 +33,7 @@ class OverviewDock(SessionDock):
         """Say what each step has found."""
         for name, label in self._found.items():
             label.setText(_finding(name, session))
-        self._export.setEnabled(session.tables.found_with is not None)
+        self.export_button.setEnabled(session.tables.found_with is not None)
 
     def run(self, session: Session) -> None:
         """Do every step."""
@@ -58,9 +58,9 @@ class OverviewDock(SessionDock):
         self.rows.addWidget(table)
         self.rows.addStretch(1)
         super()._lay_out()
-        self._export = export_all_button(self)
+        self.export_button = export_all_button(self)
         self.footer.addWidget(button("Open stack…", "Open a TIFF stack.", self._open))
-        self.footer.addWidget(self._export)
+        self.footer.addWidget(self.export_button)
 
     def _open(self) -> None:
         open_dialog(self)

@@ -31,14 +31,14 @@ class PhaseDock(SessionDock):
     )
 
     def __init__(self, napari_viewer: Viewer) -> None:
-        self._form = RecipeForm(section_paths("phase"))
-        self._told = QLabel()
-        self._told.setWordWrap(True)
+        self.form = RecipeForm(section_paths("phase"))
+        self.told = QLabel()
+        self.told.setWordWrap(True)
         super().__init__(napari_viewer)
 
     def show_session(self, session: Session) -> None:
         """Show the settings and what is known of the current frame's cuts."""
-        self._form.show_recipe(session.recipe)
+        self.form.show_recipe(session.recipe)
         self._tell()
 
     def run(self, session: Session) -> None:
@@ -46,11 +46,11 @@ class PhaseDock(SessionDock):
         steps.show_pictures(session, "unwrapped", "cuts")
 
     def _lay_out(self) -> None:
-        self.rows.addWidget(self._form)
-        self.rows.addWidget(self._told)
+        self.rows.addWidget(self.form)
+        self.rows.addWidget(self.told)
         self.rows.addStretch(1)
-        self._form.changed.connect(self.set_recipe)
-        self._form.refused.connect(lambda reason: self.say(reason, warning=True))
+        self.form.changed.connect(self.set_recipe)
+        self.form.refused.connect(lambda reason: self.say(reason, warning=True))
         super()._lay_out()
 
     def _attach(self) -> None:
@@ -64,16 +64,16 @@ class PhaseDock(SessionDock):
     def _tell(self, event: Any = None) -> None:
         session = self.session()
         if session is None or session.display is None:
-            self._told.setText("")
+            self.told.setText("")
             return
         frame = session.display.frame
         found = session.maps.ready("cuts", session.recipe, frame)
         if found is None:
-            self._told.setText("")
+            self.told.setText("")
         elif isinstance(found, Skipped):
-            self._told.setText(f"Frame {frame} is not used: {found.reason}.")
+            self.told.setText(f"Frame {frame} is not used: {found.reason}.")
         else:
-            self._told.setText(
+            self.told.setText(
                 f"Frame {frame}: {len(found.cuts)} cuts, {found.cut_length_px:.0f} px long in "
                 f"all; {100 * found.near_pi:.2g} % of neighbouring pixels differ by nearly π."
             )

@@ -28,15 +28,15 @@ class SingularitiesDock(SessionDock):
     action_tip = "Find the singularities of every frame, to a part of a pixel."
 
     def __init__(self, napari_viewer: Viewer) -> None:
-        self._form = RecipeForm(section_paths("singularities"), labels=_LABELS)
-        self._told = QLabel()
-        self._told.setWordWrap(True)
+        self.form = RecipeForm(section_paths("singularities"), labels=_LABELS)
+        self.told = QLabel()
+        self.told.setWordWrap(True)
         super().__init__(napari_viewer)
 
     def show_session(self, session: Session) -> None:
         """Show the settings and the counts."""
-        self._form.show_recipe(session.recipe)
-        self._export.setEnabled(len(session.tables.singularities) > 0)
+        self.form.show_recipe(session.recipe)
+        self.export_button.setEnabled(len(session.tables.singularities) > 0)
         self._tell()
 
     def run(self, session: Session) -> None:
@@ -44,14 +44,14 @@ class SingularitiesDock(SessionDock):
         steps.find_singularities(session)
 
     def _lay_out(self) -> None:
-        self._export = export_button(self, "singularities")
-        self.rows.addWidget(self._form)
-        self.rows.addWidget(self._told)
+        self.export_button = export_button(self, "singularities")
+        self.rows.addWidget(self.form)
+        self.rows.addWidget(self.told)
         self.rows.addStretch(1)
-        self._form.changed.connect(self.set_recipe)
-        self._form.refused.connect(lambda reason: self.say(reason, warning=True))
+        self.form.changed.connect(self.set_recipe)
+        self.form.refused.connect(lambda reason: self.say(reason, warning=True))
         super()._lay_out()
-        self.footer.addWidget(self._export)
+        self.footer.addWidget(self.export_button)
 
     def _attach(self) -> None:
         self.viewer.dims.events.current_step.connect(self._tell)
@@ -64,9 +64,9 @@ class SingularitiesDock(SessionDock):
     def _tell(self, event: Any = None) -> None:
         session = self.session()
         if session is None or session.display is None:
-            self._told.setText("")
+            self.told.setText("")
             return
-        self._told.setText("\n".join(_sentences(session, session.display.frame)))
+        self.told.setText("\n".join(_sentences(session, session.display.frame)))
 
 
 def _sentences(session: Session, frame: int) -> list[str]:

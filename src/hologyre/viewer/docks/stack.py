@@ -49,8 +49,8 @@ class StackDock(SessionDock):
     def __init__(self, napari_viewer: Viewer) -> None:
         self._summary = QLabel()
         self._summary.setWordWrap(True)
-        self._left_out = QLabel()
-        self._left_out.setWordWrap(True)
+        self.left_out = QLabel()
+        self.left_out.setWordWrap(True)
         self._optics = RecipeForm(_OPTICS, labels=_LABELS)
         self._frames = RecipeForm(("stack.frames", "stack.region"), labels=_LABELS)
         self._blanks = RecipeForm(
@@ -65,15 +65,15 @@ class StackDock(SessionDock):
         super().__init__(napari_viewer)
 
     def _lay_out(self) -> None:
-        self._leave = button(
+        self.leave_out_button = button(
             "Leave out this frame…",
             "Do not use the frame the time slider stands at; a reason is kept with the result.",
             self._leave_out,
         )
-        self._use_again = button(
+        self.take_back_button = button(
             "Use it again", "Take the current frame back into use.", self._take_back
         )
-        self._draw = button(
+        self.region_button = button(
             "Take drawn rectangle",
             "Use only the pixels inside the rectangle drawn in a Shapes layer.",
             self._take_region,
@@ -84,9 +84,9 @@ class StackDock(SessionDock):
             titled(
                 "Frames and region",
                 self._frames,
-                side_by_side(self._leave, self._use_again),
-                self._left_out,
-                self._draw,
+                side_by_side(self.leave_out_button, self.take_back_button),
+                self.left_out,
+                self.region_button,
             ),
             titled("Blank frames", self._blanks),
             titled("Notes", self._notes),
@@ -97,14 +97,14 @@ class StackDock(SessionDock):
             form.changed.connect(self.set_recipe)
             form.refused.connect(lambda reason: self.say(reason, warning=True))
         super()._lay_out()
-        self.footer.addWidget(
-            button("Load recipe…", "Take all settings from a saved recipe.", self._load)
+        self.load_button = button(
+            "Load recipe…", "Take all settings from a saved recipe.", self._load
         )
-        self.footer.addWidget(
-            button(
-                "Save recipe…", "Save all settings, to repeat this without a screen.", self._save
-            )
+        self.save_button = button(
+            "Save recipe…", "Save all settings; the command repeats them.", self._save
         )
+        self.footer.addWidget(self.load_button)
+        self.footer.addWidget(self.save_button)
 
     def show_session(self, session: Session) -> None:
         """Show what the stack is and how it is used."""
@@ -116,11 +116,11 @@ class StackDock(SessionDock):
         for form in (self._optics, self._frames, self._blanks, self._notes):
             form.show_recipe(session.recipe)
         left_out = session.recipe.stack.left_out
-        self._left_out.setText(
+        self.left_out.setText(
             "\n".join(f"{entry.frame}: {entry.reason}" for entry in left_out)
             or "No frame is left out."
         )
-        self._use_again.setEnabled(bool(left_out))
+        self.take_back_button.setEnabled(bool(left_out))
 
     def act(self) -> None:
         """Ask for files and open them."""
