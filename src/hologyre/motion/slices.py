@@ -38,6 +38,7 @@ class Slice:
     step_px: tuple[float, float]
     window: Window
     reach_px: float
+    inside: NDArray[np.complex128]
 
     @property
     def bounds(self) -> NDArray[np.float64]:
@@ -48,9 +49,9 @@ class Slice:
         )
 
     @property
-    def inside(self) -> NDArray[np.complex128]:
-        """The samples within the window, without the rim."""
-        return self.samples[WIDTH:-WIDTH, WIDTH:-WIDTH]
+    def power(self) -> float:
+        """Mean of |E|^2 in the window."""
+        return float(np.mean(np.abs(self.inside) ** 2))
 
     def to_samples(self, position_px: NDArray[np.float64]) -> NDArray[np.float64]:
         """Turn (n, 2) positions (y, x) in px into samples."""
@@ -62,7 +63,8 @@ class Slice:
 
     def turned(self, phase_rad: float) -> Slice:
         """Return the slice with a common phase taken out."""
-        return replace(self, samples=self.samples * np.exp(-1j * phase_rad))
+        factor = np.exp(-1j * phase_rad)
+        return replace(self, samples=self.samples * factor, inside=self.inside * factor)
 
 
 def slice_of(
@@ -92,6 +94,7 @@ def slice_of(
     window = field.grid.valid if window is None else window
     spectrum = coefficients(replace(field, values=field.values.astype(np.complex128)))
     reach = _reach(spectrum, field.period_px)
+    plain = spectrum
     shape, step, index, place, slope = [], [], [], [], []
     for axis, (low, high) in enumerate(
         ((window.y_min, window.y_max), (window.x_min, window.x_max))
@@ -111,13 +114,16 @@ def slice_of(
         place.append(bins % count)
         index.append(np.arange(first, last + 1))
         slope.append(np.exp(2j * np.pi * tilt * (origin + index[axis] * step[axis])))
-    placed = np.zeros(shape, dtype=np.complex128)
-    placed[place[0][:, None], place[1]] = spectrum
-    samples = scipy.fft.ifft2(placed, norm="forward", overwrite_x=True)
-    cut = samples[(index[0] % shape[0])[:, None], index[1] % shape[1]]
-    cut *= slope[0][:, None] * slope[1]
+    cuts = []
+    for part in (spectrum, plain):
+        placed = np.zeros(shape, dtype=np.complex128)
+        placed[place[0][:, None], place[1]] = part
+        samples = scipy.fft.ifft2(placed, norm="forward", overwrite_x=True)
+        cut = samples[(index[0] % shape[0])[:, None], index[1] % shape[1]]
+        cuts.append(cut * (slope[0][:, None] * slope[1]))
     oy, ox = (field.grid.origin_px[axis] + step[axis] * float(index[axis][0]) for axis in (0, 1))
-    return Slice(cut, (oy, ox), (step[0], step[1]), window, reach)
+    inside = np.ascontiguousarray(cuts[1][WIDTH:-WIDTH, WIDTH:-WIDTH])
+    return Slice(cuts[0], (oy, ox), (step[0], step[1]), window, reach, inside)
 
 
 def common_phase(before: Slice, after: Slice) -> float:

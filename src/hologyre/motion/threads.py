@@ -2,7 +2,6 @@
 
 from __future__ import annotations
 
-import itertools
 from collections.abc import Iterable
 from dataclasses import dataclass
 from typing import Literal, get_args
@@ -14,6 +13,7 @@ from numpy.typing import NDArray
 from hologyre.grid import Field
 from hologyre.motion.assign import Zeros, match, step_law
 from hologyre.motion.endings import Ledger
+from hologyre.motion.noise import noise_told
 from hologyre.motion.slabs import Slab, slabs
 from hologyre.motion.ties import BORDER, NOWHERE, UNLISTED, Nodes, Ties, on_zeros, tie
 from hologyre.motion.tracks import Links, Motion, build, checked
@@ -23,6 +23,8 @@ Method = Literal["auto", "threads", "assignment"]
 _NONE = np.empty(0, dtype=np.int64)
 _MOST_LOST = 0.1
 _MOST_MISSED = 0.5
+# how far noise may move a zero, in lengths over which the field changes
+_NEAR = 0.5
 
 
 def follow_threads(
@@ -41,7 +43,7 @@ def follow_threads(
     ----------
     fields : iterable of Field
         The field of every frame that was searched, 2-D, on one grid; taken one after another,
-        no more than eight are held.
+        no more than ten are held.
     table : DataFrame
         Singularities of these fields, columns `hologyre.tables.SINGULARITIES`. Not changed.
     frames : iterable of int, optional
@@ -75,9 +77,12 @@ def follow_threads(
     In (y, x, t) a zero is a line, oriented along grad Re E x grad Im E; its charge is the sign
     of the line's component along time, so that a line which turns back in time is a pair that
     dies or is born (M. V. Berry and M. R. Dennis, Proc. R. Soc. Lond. A 456, 2059, 2000). The
-    field between frames is the best linear prediction from eight of them, after the common
-    phase of each is taken out. There is no search radius, and charge is conserved by
-    construction: every line has two ends.
+    field between frames is the best linear prediction from ten of them, after the common phase
+    of each is taken out. Where the table tells the noise (by its standard errors), the field in
+    the frames is predicted from its neighbours too, and singularities are taken to be the zeros
+    of that, half a length of the field away at most: so noise that wipes out a pair in one
+    frame, or makes one, does not break the thread. There is no search radius, and charge is
+    conserved by construction: every line has two ends.
     """
     if method not in get_args(Method):
         raise ValueError(f"method: expected one of {', '.join(get_args(Method))}, got {method!r}")
@@ -86,9 +91,8 @@ def follow_threads(
     if not margin_px >= 0:
         raise ValueError(f"margin_px: expected 0 or more pixels, got {margin_px!r}")
     table = checked(table)
-    numbers = itertools.count() if frames is None else iter(frames)
     weaver: _Weaver | None = None
-    for slab in slabs(fields, numbers, margin_px=margin_px):
+    for slab in slabs(fields, frames, noise=noise_told(table), margin_px=margin_px):
         if weaver is None:
             weaver = _Weaver(table, slab, method, max_step_px, max_gap)
         weaver.weave(slab)
@@ -180,7 +184,9 @@ class _Weaver:
         """Return the zeros of a frame that the table lists, and the rows that are on none."""
         frame = int(slab.after if u else slab.before)
         rows = np.arange(*np.searchsorted(self._zeros.frame, [frame, frame + 1]))
-        nodes, found = on_zeros(slab, u, self._zeros.position[rows], self._zeros.charge[rows])
+        nodes, found = on_zeros(
+            slab, u, self._zeros.position[rows], self._zeros.charge[rows], _NEAR
+        )
         kept = Nodes(nodes.place[found], nodes.charge[found])
         return _Front(kept, rows[found], np.zeros(len(kept), dtype=np.int64)), rows[~found]
 

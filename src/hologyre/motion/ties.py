@@ -49,28 +49,43 @@ class Ties:
 
 
 def on_zeros(
-    slab: Slab, u: float, position_px: NDArray[np.float64], charge: NDArray[np.int64]
+    slab: Slab,
+    u: float,
+    position_px: NDArray[np.float64],
+    charge: NDArray[np.int64],
+    reach: float = 0.1,
 ) -> tuple[Nodes, NDArray[np.bool_]]:
     """Move listed singularities onto the zeros of the field at one end of a slab.
+
+    Parameters
+    ----------
+    slab : Slab
+    u : float
+        0 for the near slice, 1 for the far one.
+    position_px, charge : (n, 2), (n,) arrays
+        The singularities.
+    reach : float
+        How far a zero may lie away, in lengths over which the field changes.
 
     Returns
     -------
     nodes : Nodes
         All of them, those that are on no zero at their old place.
     found : (n,) bool array
-        Whether there is a zero of this charge, listed once, a tenth of the field's length
-        away at most.
+        Whether there is a zero of this charge near by, listed once.
     """
     start = slab.frame.to_samples(position_px)
     found, place, sign = polish_all(
-        slab.samples, slab.series, start[:, 0], start[:, 1], u, 0.1 * slab.unit[0]
+        slab.samples, slab.series, start[:, 0], start[:, 1], u, reach * slab.unit[0]
     )
     found = found & (sign == charge)
     place = np.where(found[:, None], place, start)
     if len(place) > 1:
-        # of two that are the same zero, the second is on none
+        # of two that are the same zero, the one farther away is on none
         pairs = cKDTree(place).query_pairs(1e-4, output_type="ndarray")
-        found[pairs.max(axis=1)] = False
+        away = np.linalg.norm(place - start, axis=1)
+        farther = np.where(away[pairs[:, 0]] > away[pairs[:, 1]], pairs[:, 0], pairs[:, 1])
+        found[farther] = False
     return Nodes(place, charge), found
 
 

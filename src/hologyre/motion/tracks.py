@@ -127,7 +127,7 @@ def _events(
     moment = np.where(np.isnan(moment), 0.5 * (before + after), moment)
     y = np.array([h.y_px for h in happenings])
     x = np.array([h.x_px for h in happenings])
-    scale = _um_per_px(table)
+    scale = um_per_px(table)
     events = pd.DataFrame(
         {
             "event": np.arange(len(happenings)),
@@ -157,7 +157,7 @@ def _time_s(table: pd.DataFrame, moment: NDArray[np.float64]) -> NDArray[np.floa
     return np.interp(moment, frame, known["time_s"].to_numpy(), left=np.nan, right=np.nan)
 
 
-def _um_per_px(table: pd.DataFrame) -> float:
+def um_per_px(table: pd.DataFrame) -> float:
     """Return the object-space size of a pixel that the table's own columns imply."""
     px = table[["y_px", "x_px"]].to_numpy()
     um = table[["y_um", "x_um"]].to_numpy()
