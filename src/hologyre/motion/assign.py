@@ -3,21 +3,22 @@
 from __future__ import annotations
 
 import itertools
+from collections.abc import Iterator
 from dataclasses import dataclass
 from typing import Literal, Self
 
 import numpy as np
 import pandas as pd
 from numpy.typing import ArrayLike, NDArray
-from scipy.spatial import cKDTree
 
 from hologyre.grid import Window
 from hologyre.motion.endings import Ledger
 from hologyre.motion.matching import cheapest_matching
+from hologyre.motion.neighbours import near
 from hologyre.motion.steps import StepLaw
 from hologyre.motion.tracks import Links, Motion, build, checked
 
-_PAIRS_SAMPLED = 40
+_PAIRS_SAMPLED = 16
 
 
 def link_singularities(
@@ -127,7 +128,7 @@ def step_law(
     """Return the law of steps and the longest step, both from the table itself.
 
     The median step and the links it rests on are found together, by repeated assignment
-    over up to 40 pairs of neighbouring frames.
+    over a sample of neighbouring frames.
     """
     frame = table["frame"].to_numpy()
     n_frames = max(len(np.unique(frame)), 1)
@@ -136,25 +137,16 @@ def step_law(
     spacing = 1.0 / np.sqrt(density)
     reach = spacing if max_step_px == "auto" else float(max_step_px)
     scale = 0.1 * min(spacing, reach)
-    position = table[["y_px", "x_px"]].to_numpy()
-    charge = table["charge"].to_numpy()
-    bounds = np.flatnonzero(np.diff(frame)) + 1
-    groups = np.split(np.arange(len(frame)), bounds)
-    pairs = list(itertools.pairwise(groups))
-    pairs = pairs[:: max(1, len(pairs) // _PAIRS_SAMPLED)]
+    candidates = list(_candidates(table, reach))
     for _ in range(8):
         law = StepLaw(scale, density)
-        steps = [
-            _steps(law, reach, position, charge, before, after)
-            / float(frame[after[0]] - frame[before[0]])
-            for before, after in pairs
-        ]
+        steps = [c.steps(law) for c in candidates]
         step = np.concatenate(steps) if steps else np.empty(0)
         if len(step) < 8:
             break
         # zeros at rest keep a scale: positions are never known better than this
         new = max(float(np.median(step)), 1e-3)
-        settled = abs(new - scale) < 0.02 * scale
+        settled = abs(new - scale) < 0.05 * scale
         scale = new
         if settled:
             break
@@ -163,37 +155,43 @@ def step_law(
     return StepLaw(scale, density), reach
 
 
-def _steps(
-    law: StepLaw,
-    reach: float,
-    position: NDArray[np.float64],
-    charge: NDArray[np.int64],
-    before: NDArray[np.int64],
-    after: NDArray[np.int64],
-) -> NDArray[np.float64]:
-    """Return the lengths of the links between two frames."""
-    found = []
-    for sign in (1, -1):
-        a, b = before[charge[before] == sign], after[charge[after] == sign]
-        i, j, d = near(position[a], position[b], reach)
-        alone = np.full(max(len(a), len(b)), -np.log(law.missed))
+@dataclass(frozen=True, eq=False)
+class _Candidates:
+    """Zeros of one charge in two frames, and which of them may follow which."""
+
+    before: int
+    after: int
+    i: NDArray[np.int64]
+    j: NDArray[np.int64]
+    distance: NDArray[np.float64]
+    frames: int
+
+    def steps(self, law: StepLaw) -> NDArray[np.float64]:
+        """Return the lengths of the cheapest links, per frame."""
+        alone = -np.log(law.missed)
         partner = cheapest_matching(
-            i, j, law.link(d, 1.0), left_alone=alone[: len(a)], right_alone=alone[: len(b)]
+            self.i,
+            self.j,
+            law.link(self.distance, self.frames),
+            left_alone=np.full(self.before, alone),
+            right_alone=np.full(self.after, alone),
         )
-        linked = partner >= 0
-        found.append(np.linalg.norm(position[a[linked]] - position[b[partner[linked]]], axis=1))
-    return np.concatenate(found)
+        linked = partner[self.i] == self.j
+        return self.distance[linked] / self.frames
 
 
-def near(
-    a: NDArray[np.float64], b: NDArray[np.float64], reach: float
-) -> tuple[NDArray[np.int64], NDArray[np.int64], NDArray[np.float64]]:
-    """Return the pairs (i, j) of points nearer than `reach`, and their distances."""
-    if len(a) == 0 or len(b) == 0:
-        nothing = np.empty(0, dtype=np.int64)
-        return nothing, nothing, np.empty(0)
-    found = cKDTree(a).sparse_distance_matrix(cKDTree(b), reach, output_type="ndarray")
-    return found["i"].astype(np.int64), found["j"].astype(np.int64), found["v"]
+def _candidates(table: pd.DataFrame, reach: float) -> Iterator[_Candidates]:
+    """Yield the candidates between neighbouring frames, evenly sampled."""
+    frame = table["frame"].to_numpy()
+    position = table[["y_px", "x_px"]].to_numpy()
+    charge = table["charge"].to_numpy()
+    groups = np.split(np.arange(len(frame)), np.flatnonzero(np.diff(frame)) + 1)
+    pairs = list(itertools.pairwise(groups))
+    for before, after in pairs[:: max(1, len(pairs) // _PAIRS_SAMPLED)]:
+        for sign in (1, -1):
+            a, b = before[charge[before] == sign], after[charge[after] == sign]
+            span = int(frame[after[0]] - frame[before[0]])
+            yield _Candidates(len(a), len(b), *near(position[a], position[b], reach), span)
 
 
 @dataclass(frozen=True)
@@ -269,11 +267,13 @@ def match(
 ) -> tuple[NDArray[np.int64], NDArray[np.int64]]:
     """Return the matched rows between the ends of tracks and the zeros of a new frame."""
     frame, charge, hole = zeros.frame, zeros.charge, now - last
-    gives = np.concatenate([tips[charge[tips] > 0], rows[charge[rows] < 0]])
-    takes = np.concatenate([rows[charge[rows] > 0], tips[charge[tips] < 0]])
-    longest = now - int(frame[tips].min(initial=last))
-    i, j, d = near(zeros.position[gives], zeros.position[takes], reach * longest)
-    a, b = gives[i], takes[j]
+    seen = frame[tips] == last
+    fresh, waiting = tips[seen], tips[~seen]
+    gives = [rows[charge[rows] < 0], fresh[charge[fresh] > 0], waiting[charge[waiting] > 0]]
+    takes = [rows[charge[rows] > 0], fresh[charge[fresh] < 0], waiting[charge[waiting] < 0]]
+    i, j, d = _near_by_age(zeros, gives, takes, reach, last, now)
+    left, right = np.concatenate(gives), np.concatenate(takes)
+    a, b = left[i], right[j]
     link = (frame[a] == now) != (frame[b] == now)
     # pairs die as seen in the last frame and are born as seen in this one
     pair = (frame[a] == frame[b]) & (frame[a] >= last) & (charge[a] == -charge[b])
@@ -289,8 +289,32 @@ def match(
             0.0,
             np.minimum(zeros.vanishing[side], law.crossing(zeros.to_border[side], hole)),
         )
-        for side in (gives, takes)
+        for side in (left, right)
     ]
     partner = cheapest_matching(i, j, price, left_alone=alone[0], right_alone=alone[1])
     matched = np.flatnonzero(partner >= 0)
-    return gives[matched], takes[partner[matched]]
+    return left[matched], right[partner[matched]]
+
+
+def _near_by_age(
+    zeros: Zeros,
+    gives: list[NDArray[np.int64]],
+    takes: list[NDArray[np.int64]],
+    reach: float,
+    last: int,
+    now: int,
+) -> tuple[NDArray[np.int64], NDArray[np.int64], NDArray[np.float64]]:
+    """Return near pairs; the few zeros that wait may have gone farther and link only.
+
+    Both lists hold the new frame's zeros, those of the frame before and those that wait.
+    """
+    position = zeros.position
+    new, old = np.concatenate(gives[:2]), np.concatenate(takes[:2])
+    found = [near(position[new], position[old], reach * (now - last))]
+    for waiting, rows, offset in ((gives[2], takes[0], len(new)), (takes[2], gives[0], len(old))):
+        if len(waiting):
+            far = reach * (now - int(zeros.frame[waiting].min()))
+            i, j, d = near(position[waiting], position[rows], far)
+            found.append((i + offset, j, d) if waiting is gives[2] else (j, i + offset, d))
+    i, j, d = (np.concatenate(part) for part in zip(*found, strict=True))
+    return i, j, d

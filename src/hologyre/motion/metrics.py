@@ -8,8 +8,8 @@ import numpy as np
 import pandas as pd
 from numpy.typing import NDArray
 
-from hologyre.motion.assign import near
 from hologyre.motion.matching import cheapest_matching
+from hologyre.motion.neighbours import near
 
 
 @dataclass(frozen=True)
