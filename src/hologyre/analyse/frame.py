@@ -31,6 +31,10 @@ from hologyre.tables import SINGULARITIES, conform, empty
 _FAINT_POWER = 4.0
 _FAINT_VISIBILITY = 0.05
 
+# along the border, steps of the phase beyond this are halved, at most so often
+_STEEP_RAD = 1.0
+_HALVINGS = 12
+
 
 @dataclass(frozen=True, eq=False)
 class FrameResult:
@@ -161,13 +165,26 @@ def border_winding(field: Field, margin_px: float = 0.0) -> int:
     # from +x to +y: along the top, down the right, back along the bottom, up the left
     path_y = np.concatenate([np.full(x.size, y[0]), y, np.full(x.size, y[-1]), y[::-1]])
     path_x = np.concatenate([x, np.full(y.size, x[-1]), x[::-1], np.full(y.size, x[0])])
-    value, _, _ = evaluate(field, path_y, path_x)
+    value = evaluate(field, path_y, path_x)[0]
+    for _ in range(_HALVINGS):
+        turn = np.angle(np.roll(value, -1) * value.conj())
+        steep = np.flatnonzero(np.abs(turn) > _STEEP_RAD)
+        if not steep.size:
+            break
+        # a zero is near: look closer
+        middle_y, middle_x = (
+            (path[steep] + np.roll(path, -1)[steep]) / 2 for path in (path_y, path_x)
+        )
+        value = np.insert(value, steep + 1, evaluate(field, middle_y, middle_x)[0])
+        path_y, path_x = (
+            np.insert(path, steep + 1, middle)
+            for path, middle in ((path_y, middle_y), (path_x, middle_x))
+        )
     return round(float(np.angle(np.roll(value, -1) * value.conj()).sum() / (2 * np.pi)))
 
 
 def _side(first: float, last: float, radius: float) -> NDArray[np.float64]:
-    # 32 points in a shortest wavelength: a step of the phase past pi needs a zero this near
-    return np.linspace(first, last, max(2, int((last - first) * radius * 32) + 1))
+    return np.linspace(first, last, max(2, int((last - first) * radius * 16) + 1))
 
 
 def _row(plan: Plan, frame: int, **known: Any) -> dict[str, Any]:

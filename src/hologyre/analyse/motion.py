@@ -9,7 +9,7 @@ import pandas as pd
 
 from hologyre.analyse.planning import Plan
 from hologyre.grid import Field
-from hologyre.motion import Motion, follow_threads, link_singularities
+from hologyre.motion import Motion, audit, estimate_drift, follow_threads, link_singularities
 from hologyre.tables import EVENTS, FRAMES, SINGULARITIES, TRAJECTORIES, conform, empty
 
 
@@ -66,8 +66,31 @@ def link(
 
 
 def frame_table(rows: Iterable[Mapping[str, Any]], motion: Motion) -> pd.DataFrame:
-    """Return the table of frames."""
-    return conform(pd.DataFrame(list(rows)), FRAMES)
+    """Return the table of frames: what was measured, the common drift and the audit."""
+    table = conform(pd.DataFrame(list(rows)), FRAMES)
+    done = table["status"] == "done"
+    measured = table[done]
+    if motion.trajectories.empty:
+        net = measured["positive"] - measured["negative"]
+        odd = net != measured["border_winding"]
+        told = pd.Series("ok", index=measured.index, dtype="str")
+        told[odd] = [
+            f"charge {charge:+d} but {turns:+d} turns along the border"
+            for charge, turns in zip(net[odd], measured["border_winding"][odd], strict=True)
+        ]
+        return table.assign(audit=told.reindex(table.index, fill_value=""))
+    winding = dict(zip(measured["frame"], measured["border_winding"], strict=True))
+    audited = audit(
+        motion.trajectories, motion.events, winding, frames=measured["frame"]
+    ).set_index("frame")
+    drift = estimate_drift(motion.trajectories).set_index("frame")
+    # a frame without singularities tells nothing of drift: it stays as it was
+    known = drift.reindex(measured["frame"]).ffill().fillna(0.0)
+    return table.assign(
+        audit=table["frame"].map(audited["audit"]).fillna(""),
+        drift_y_px=table["frame"].map(known["drift_y_px"]),
+        drift_x_px=table["frame"].map(known["drift_x_px"]),
+    )
 
 
 def _located(plan: Plan, events: pd.DataFrame) -> pd.DataFrame:

@@ -238,8 +238,8 @@ def _warnings(planned: Plan, analysis: Analysis, status: Status) -> tuple[str, .
     if len(odd):
         first = odd.iloc[0]
         told.append(
-            f"{_frames(odd['frame'].tolist())}: charges do not add up (frame {first['frame']}: "
-            f"{first['audit']})."
+            f"{_frames(odd['frame'].tolist())}: not everything adds up (frame {first['frame']}: "
+            f"{first['audit']}); see the column audit of frames.csv."
         )
     if status == "interrupted":
         told.append(
