@@ -16,6 +16,7 @@ from hologyre.analyse import Analysis, FrameResult, analyse, frame_table, inspec
 from hologyre.fields.interpolate import evaluate, on_pixels
 from hologyre.motion import Motion
 from hologyre.recipe import Recipe, RecipeError
+from hologyre.simulate.camera import Camera, record
 from hologyre.simulate.random_waves import RandomWaves
 from hologyre.stacks import StackError, open_stack
 from hologyre.survey import survey
@@ -333,12 +334,25 @@ def test_inspection_says_what_a_microscopist_acts_on(stack_file: Path) -> None:
     # the beams' visibility is 0.8 by construction of the simulation
     assert found.visibility == pytest.approx(0.8, abs=0.1)
     assert found.radius_limit_per_px == pytest.approx(np.hypot(0.13, 0.19) / 3, rel=0.05)
-    assert not any(word in text for word in ("visibility 0.8 is low", "overlaps", "is high"))
+    assert not any(word in text for word in ("weak", "overlaps", "is high"))
 
 
 def test_inspection_warns_of_low_visibility(holograms: NDArray[Any]) -> None:
     weak = 0.1 * (holograms.astype(np.float32) - 60) + 60
-    assert any("visibility" in warning for warning in inspect(weak).warnings)
+    assert any("the fringes are weak" in warning for warning in inspect(weak).warnings)
+
+
+def test_inspection_warns_of_a_band_given_too_wide(holograms: NDArray[Any], recipe: Recipe) -> None:
+    wide = recipe.with_settings({"carrier.radius": 0.1})
+    warnings = inspect(holograms, wide).warnings
+    assert any("the band's radius 0.100 overlaps its neighbours" in text for text in warnings)
+
+
+def test_inspection_warns_of_high_noise() -> None:
+    wave = RandomWaves("disc", 20.0, seed=4)
+    dim = Camera(full_well_e=50.0, visibility=0.2)
+    frame = record(wave.on_frame((128, 128), 0.0), dim, seed=1)
+    assert any("the phase noise of 0." in text for text in inspect(frame).warnings)
 
 
 def test_inspection_of_a_frame_that_cannot_be_used_is_refused(holograms: NDArray[Any]) -> None:

@@ -275,7 +275,16 @@ def test_skipped_frames_are_told_once_for_each_reason(
     frames = np.array(holograms)
     frames[1:4] = 9
     summary = run(as_stack(frames), tmp_path, recipe)
-    assert summary.warnings == ("Frames 1, 2, 3 skipped: all pixels have the same value, 9.",)
+    told = [warning for warning in summary.warnings if "skipped" in warning]
+    assert told == ["Frames 1, 2, 3 skipped: all pixels have the same value, 9."]
+
+
+def test_what_is_wrong_with_the_fringes_is_told(
+    holograms: NDArray[Any], recipe: Recipe, tmp_path: Path
+) -> None:
+    weak = np.clip(0.1 * (holograms.astype(np.float32) - 60) + 60, 0, 255)
+    summary = run(as_stack(weak), tmp_path, recipe)
+    assert any(warning.startswith("The fringes are weak") for warning in summary.warnings)
 
 
 def test_file_held_open_by_a_spreadsheet_gets_a_name_beside_it(

@@ -10,15 +10,12 @@ import xarray as xr
 from numpy.typing import ArrayLike
 
 from hologyre.analyse.frame import mean_power, measure
-from hologyre.analyse.planning import plan
+from hologyre.analyse.planning import Plan, plan
 from hologyre.fields.carrier import Carrier, find_carrier
 from hologyre.recipe import Recipe
 from hologyre.stacks import as_stack
-from hologyre.survey import read_counts, survey
+from hologyre.survey import read_counts, survey, without_gaps
 
-# fringes finer than this are flattened by the pixels themselves
-_FINEST_FRINGE_PX = 2.5
-_LOW_VISIBILITY = 0.2
 _HIGH_NOISE_RAD = 0.15
 
 
@@ -88,7 +85,7 @@ class Inspection:
             f"{self.finest_px:.1f} px; it may reach {self.radius_limit_per_px:.2f} before it meets "
             f"{self._neighbour()}.",
             f"{self.singularities} singularities are found in this frame.",
-            *(f"Warning: {warning}" for warning in self.warnings),
+            *(f"Warning: {warning}." for warning in self.warnings),
         )
 
     def summary(self) -> str:
@@ -96,10 +93,13 @@ class Inspection:
         saturated = "saturation unknown"
         if not math.isnan(self.saturated):
             saturated = f"{100 * self.saturated:.2g} % of pixels saturated"
+        noise = "phase noise unknown"
+        if not math.isnan(self.phase_noise_rad):
+            noise = f"phase noise about {1000 * self.phase_noise_rad:.0f} mrad"
         return (
             f"carrier {self.fy_per_px:.3f}, {self.fx_per_px:.3f} cycles/px (y, x), "
             f"{self.fringe_px:.1f} px per fringe; visibility {self.visibility:.2g}; {saturated}; "
-            f"phase noise about {1000 * self.phase_noise_rad:.0f} mrad"
+            f"{noise}"
         )
 
     def as_dict(self) -> dict[str, Any]:
@@ -140,26 +140,36 @@ def inspect(
         If `frame` is given and cannot be used.
     """
     stack = as_stack(stack)
-    resolved = survey(stack, recipe)
-    planned = plan(stack, resolved)
+    return inspect_plan(plan(stack, survey(stack, recipe)), frame)
+
+
+def inspect_plan(planned: Plan, frame: int | None = None) -> Inspection:
+    """Look at one frame of a stack that is surveyed; as `inspect`."""
+    stack, carrier = planned.stack, planned.carrier
     middle = len(planned.frames) // 2
     tried = [frame] if frame is not None else [*planned.frames[middle:], *planned.frames[:middle]]
     result = next((r for r in (measure(planned, t) for t in tried) if r.field is not None), None)
     if result is None or result.field is None:
         raise ValueError(f"frame: {tried[0]} cannot be used: {measure(planned, tried[0]).reason}")
-    carrier, row = planned.carrier, result.row
+    row = result.row
     found = find_carrier(
-        read_counts(stack, result.frame, resolved), conjugate=resolved.carrier.conjugate
+        without_gaps(read_counts(stack, result.frame, planned.recipe)),
+        conjugate=planned.recipe.carrier.conjugate,
     )
-    amplitude = math.sqrt(mean_power(result.field))
     limit = min(carrier.frequency / 3, 0.5 - abs(carrier.fy), 0.5 - abs(carrier.fx))
-    noise = row["noise"] / (amplitude * math.sqrt(2))
-    notes = found.notes if isinstance(found, Carrier) else ()
-    warnings = (
-        *stack.attrs.get("notes", ()),
-        *notes,
-        *_warnings(carrier.frequency, carrier.radius, limit, row["visibility"], noise),
-    )
+    noise = row.get("noise", math.nan) / math.sqrt(2 * mean_power(result.field))
+    told = list(stack.attrs.get("notes", ()))
+    if isinstance(found, Carrier):
+        told += found.notes
+    if carrier.radius > limit and not (isinstance(found, Carrier) and found.radius > limit):
+        told.append(
+            f"the band's radius {carrier.radius:.3f} overlaps its neighbours: take at most "
+            f"{limit:.3f}"
+        )
+    if noise > _HIGH_NOISE_RAD:
+        told.append(
+            f"the phase noise of {noise:.2f} rad is high: expose longer or balance the beams"
+        )
     return Inspection(
         name=str(stack.attrs.get("name", "stack")),
         frames=stack.sizes["t"],
@@ -178,26 +188,5 @@ def inspect(
         saturated=row.get("saturated", math.nan),
         phase_noise_rad=noise,
         singularities=len(result.singularities),
-        warnings=tuple(dict.fromkeys(warnings)),
+        warnings=tuple(dict.fromkeys(told)),
     )
-
-
-def _warnings(
-    frequency: float, radius: float, limit: float, visibility: float, noise: float
-) -> list[str]:
-    told = []
-    if 1 / frequency < _FINEST_FRINGE_PX:
-        told.append(
-            f"{1 / frequency:.2f} px per fringe is near the camera's limit of 2; tilt the "
-            "reference beam less."
-        )
-    if radius > limit:
-        told.append(
-            f"the band's radius {radius:.3f} is beyond {limit:.3f}, so that it overlaps its "
-            "neighbours; tilt the reference beam more or close the aperture."
-        )
-    if visibility < _LOW_VISIBILITY:
-        told.append(f"visibility {visibility:.2f} is low; balance the beams or look for vibration.")
-    if noise > _HIGH_NOISE_RAD:
-        told.append(f"phase noise of {noise:.2f} rad is high; expose longer or balance the beams.")
-    return told

@@ -19,6 +19,7 @@ from hologyre.analyse import (
     Analysis,
     Plan,
     frame_table,
+    inspect_plan,
     iter_frames,
     join_singularities,
     link,
@@ -229,8 +230,11 @@ def _collect(planned: Plan, store: FrameStore) -> Analysis:
 
 
 def _warnings(planned: Plan, analysis: Analysis, status: Status) -> tuple[str, ...]:
-    told = list(planned.stack.attrs.get("notes", ()))
     frames = analysis.frames
+    told = []
+    if analysis.measured:
+        found = inspect_plan(planned, analysis.measured[len(analysis.measured) // 2])
+        told += [f"{caution[:1].upper()}{caution[1:]}." for caution in found.warnings]
     skipped = frames[(frames["status"] == "skipped") & ~frames["frame"].isin(planned.left_out)]
     for reason, group in skipped.groupby("reason", sort=False):
         told.append(f"{_frames(group['frame'].tolist())} skipped: {reason}.")
