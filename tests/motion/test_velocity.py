@@ -8,8 +8,8 @@ import pytest
 
 from hologyre.grid import Window
 from hologyre.motion import field_velocity, follow_threads, track_velocity
-from hologyre.simulate.truth import find_zeros
 from hologyre.simulate.waves import RandomWaves
+from hologyre.singularities.locate import locate_singularities
 
 
 def true_velocity(wave, table: pd.DataFrame) -> np.ndarray:
@@ -65,18 +65,19 @@ def test_errors_of_velocities_tell_how_far_off_they_are(field_at, zeros_of):
         assert 0.6 < np.median(np.abs(pull)) / 0.6745 < 1.6
 
 
-def test_speeds_of_random_waves_follow_the_published_law():
+def test_speeds_of_random_waves_follow_the_published_law(field_at):
     # P(v) = 2 v w^2 / (v^2 + w^2)^2, so a median of w = sqrt(2 Var(omega) / <k^2>),
     # P(v > 2 w) = 1/5 and P(v > 3 w) = 1/10: it follows for a rate independent of the gradient
     # from M. V. Berry and M. R. Dennis, Proc. R. Soc. Lond. A 456, 2059 (2000).
+    window = Window(0.0, 191.0, 0.0, 191.0)
     speeds = []
     for seed in range(3):
-        wave = RandomWaves("disc", 8.0, 0.1, seed=seed, box_px=128.0)
-        zeros = find_zeros(wave, Window(0.0, 127.0, 0.0, 127.0)).assign(frame=0)
+        wave = RandomWaves("disc", 8.0, 0.1, seed=seed, box_px=192.0)
+        zeros = locate_singularities(field_at(wave, 0.0, (192.0, 192.0), (60, 60), window))
         w = np.sqrt(2 * wave.frequency_variance / wave.mean_square_k)
         speeds.append(np.hypot(*true_velocity(wave, zeros).T) / w)
     speed = np.concatenate(speeds)
-    # 2,000 zeros that are not independent: four standard errors of as many independent ones
+    # 2,700 zeros that are not independent: four standard errors of as many independent ones
     n = len(speed)
     assert np.median(speed) == pytest.approx(1.0, abs=4 / np.sqrt(n))
     assert np.mean(speed > 2) == pytest.approx(0.2, abs=4 * np.sqrt(0.16 / n))

@@ -11,6 +11,7 @@ from hologyre.motion.kinematics import (
     summarise_tracks,
 )
 from hologyre.motion.lifetimes import lifetimes, survival
+from hologyre.motion.lines import VortexLines, vortex_lines
 from hologyre.motion.metrics import TrackScores, score_events, score_tracks
 from hologyre.motion.pairs import SquareRootLaw, fit_square_root, pair_separation
 from hologyre.motion.threads import follow_threads
@@ -22,6 +23,7 @@ __all__ = [
     "Motion",
     "SquareRootLaw",
     "TrackScores",
+    "VortexLines",
     "audit",
     "estimate_drift",
     "field_velocity",
@@ -40,4 +42,5 @@ __all__ = [
     "summarise_tracks",
     "survival",
     "track_velocity",
+    "vortex_lines",
 ]

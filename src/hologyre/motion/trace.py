@@ -19,14 +19,17 @@ LOST, FAR, NEAR, OUT = 0, 1, 2, 3
 _MOST_STEPS = 5000
 _SHORTEST = 1e-7
 _FINE = 0.03
-_CLOSE = 1e-7
+# the interpolation is exact to 1e-7 of the field: closer than this, zeros are one
+_EXACT = 1e-6
+_CLOSE = 1e-5
 
 
 @numba.njit(cache=True, nogil=True)
 def _kernel(place, first, weight, slope):  # type: ignore[no-untyped-def]
     for i in range(WIDTH):
         v = (place - (first + i)) / (0.5 * WIDTH)
-        root = math.sqrt(max(1.0 - v * v, 1e-12))
+        # the slope has a pole at the kernel's rim, where the weight is 1e-8: keep off it
+        root = math.sqrt(max(1.0 - v * v, 1e-4))
         weight[i] = math.exp(BETA * (root - 1.0))
         slope[i] = -weight[i] * BETA * v / (root * 0.5 * WIDTH)
 
@@ -97,7 +100,7 @@ def polish(samples, series, y, x, u, reach):  # type: ignore[no-untyped-def]
         x += dx * shorten
         if math.hypot(y - y0, x - x0) > 2.0 * reach:
             return False, y, x, 0.0
-        if length < 1e-9 * max(reach, 1e-3) or length < 1e-9:
+        if length < _EXACT:
             return math.hypot(y - y0, x - x0) <= reach, y, x, det
     return False, y, x, 0.0
 
