@@ -107,7 +107,6 @@ def test_what_is_ready_can_be_asked_for_without_computing(
     assert reads == []
     maps.prepare("cuts", recipe, 0)
     assert maps.ready("cuts", recipe, 0).cuts is maps.unwrapping(recipe, 0).cuts
-    assert maps.ready("phase", recipe, 0) is not None
 
 
 def test_the_carrier_of_a_frame_without_fringes_is_skipped_with_the_reason() -> None:

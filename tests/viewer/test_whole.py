@@ -273,13 +273,14 @@ def test_a_result_is_loaded_with_its_stack(
     assert len(session.display.layer("tracks").data) == len(session.tables.trajectories)
 
 
-def test_a_sample_opens_lazily_in_its_own_micrometres_with_all_docks(
-    make_napari_viewer: Any, qtbot: Any
+def test_a_sample_opens_at_its_start_in_its_own_micrometres_with_all_docks(
+    make_napari_viewer: Any,
 ) -> None:
     viewer = make_napari_viewer()
     viewer.open_sample("hologyre", "drying-film")
-    qtbot.waitUntil(lambda: len(viewer.window.dock_widgets) == 6, timeout=5_000)
+    assert len(viewer.window.dock_widgets) == 6
     session = current_session(viewer)
+    assert session.display.frame == 0
     assert session.stack.chunks[0] == (1,) * session.stack.sizes["t"]
     assert session.optics.wavelength_nm == 532
     assert [str(u) for u in viewer.layers[0].units] == ["second", "micrometer", "micrometer"]

@@ -12,7 +12,7 @@ from napari.layers import Layer
 
 from hologyre.viewer import drawing
 from hologyre.viewer.ahead import Ahead
-from hologyre.viewer.layers import placement
+from hologyre.viewer.layers import Placement, placement
 from hologyre.viewer.session import Session, metadata_for, role_of, session_of
 from hologyre.viewer.styles import RASTERS, STYLES, Role
 
@@ -33,6 +33,7 @@ class Display:
         self._session = session
         self._drawn = session.recipe
         self._bound: dict[Role, Hashable] = {}
+        self._placed: Placement | None = None
         self._ahead = Ahead(self._draw_frame)
         session.display = self
         session.recipe_changed.connect(self._follow_recipe)
@@ -137,6 +138,9 @@ class Display:
 
     def _place(self) -> None:
         place = placement(self._session.optics)
+        if place == self._placed:
+            return
+        self._placed = place
         for layer in self._layers():
             for name, value in place.of(layer.ndim).items():
                 setattr(layer, name, value)

@@ -35,8 +35,12 @@ def contrast(session: Session, recipe: Recipe, role: Role, frame: int) -> dict[s
     values = values[np.isfinite(values)]
     if not len(values):
         return {"contrast_limits": (0.0, 1.0)}
-    low, high = np.percentile(values, [0.0, 99.7] if role == "amplitude" else [0.0, 100.0])
-    return {"contrast_limits": (float(low), float(max(high, low + 1e-6)))}
+    if role == "amplitude":
+        high = float(np.percentile(values, 99.7))
+        return {"contrast_limits": (0.0, max(high, 1e-6))}
+    # symmetric, as the phase of other frames may lean the other way
+    reach = float(np.abs(values).max())
+    return {"contrast_limits": (-max(reach, np.pi), max(reach, np.pi))}
 
 
 def table(session: Session, role: Role) -> tuple[NDArray[np.float64], dict[str, Any]]:

@@ -16,7 +16,6 @@ from qtpy.QtWidgets import (
     QLineEdit,
     QPlainTextEdit,
     QPushButton,
-    QVBoxLayout,
     QWidget,
 )
 
@@ -238,16 +237,6 @@ class _LeavingTextEdit(QPlainTextEdit):
             self.left.emit()
             return
         super().keyPressEvent(event)
-
-
-def stacked(*parts: QWidget) -> QWidget:
-    """Return the widgets one below the other, without margins."""
-    holder = QWidget()
-    layout = QVBoxLayout(holder)
-    layout.setContentsMargins(0, 0, 0, 0)
-    for part in parts:
-        layout.addWidget(part)
-    return holder
 
 
 def _number(value: float) -> str:

@@ -8,7 +8,7 @@ from pathlib import Path
 import napari
 from napari import Viewer
 from qtpy.QtCore import Qt
-from qtpy.QtWidgets import QTabBar
+from qtpy.QtWidgets import QDockWidget, QTabBar
 
 from hologyre.recipe import Recipe
 from hologyre.results import load_result
@@ -19,16 +19,23 @@ PLUGIN = "hologyre"
 DOCKS = ("Stack", "Field", "Phase", "Singularities", "Motion")
 OVERVIEW = "All docks"
 
+_TABS = "QTabBar::tab { padding: 4px; min-width: 0px; font-size: 11px; }"
+
 
 def open_docks(viewer: Viewer | None = None) -> None:
     """Open the overview and the docks of all steps, tabbed together in the order of the work."""
     viewer = viewer or napari.current_viewer()
     if viewer is None:
         raise RuntimeError("no napari viewer is open")
-    for name in (OVERVIEW, *DOCKS):
-        viewer.window.add_plugin_dock_widget(PLUGIN, name, tabify=True)
+    viewer.window.add_plugin_dock_widget(PLUGIN, OVERVIEW, tabify=True)
+    open_steps(viewer)
     raise_dock(viewer, OVERVIEW)
-    _fit_tabs(viewer)
+
+
+def open_steps(viewer: Viewer) -> None:
+    """Open the docks of all steps, behind the dock that is in front."""
+    docks = [viewer.window.add_plugin_dock_widget(PLUGIN, n, tabify=True)[0] for n in DOCKS]
+    _fit_tabs(docks[0])
 
 
 def raise_dock(viewer: Viewer, name: str) -> None:
@@ -90,11 +97,10 @@ def show_tables(session: Session, tables: Tables) -> None:
         session.display.show("phase", "singularities", "tracks")
 
 
-def _fit_tabs(viewer: Viewer) -> None:
+def _fit_tabs(dock: QDockWidget) -> None:
     """Give the tabs of the docks room for their whole titles."""
-    dock, _ = viewer.window.add_plugin_dock_widget(PLUGIN, OVERVIEW, tabify=True)
     for bar in dock.window().findChildren(QTabBar):
         titles = {bar.tabText(i) for i in range(bar.count())}
-        if {*DOCKS} <= titles:
+        if titles >= {*DOCKS}:
             bar.setElideMode(Qt.TextElideMode.ElideNone)
-            bar.setStyleSheet("QTabBar::tab { padding: 4px 4px; min-width: 0px; font-size: 11px; }")
+            bar.setStyleSheet(_TABS)

@@ -107,9 +107,15 @@ class FrameMaps:
         return self._get("phase", recipe, frame, self._phase)
 
     def unwrapped(self, recipe: Recipe, frame: int) -> NDArray[np.float32]:
-        """Return the unwrapped phase, rad."""
+        """Return the unwrapped phase, rad, its median within half a turn of zero.
+
+        The whole turns taken off say nothing, and frames become comparable.
+        """
         found = self.unwrapping(recipe, frame)
-        return found.phase if isinstance(found, Unwrapped) else self._blank()
+        if isinstance(found, Skipped):
+            return self._blank()
+        turns = np.round(np.nanmedian(found.phase[::4, ::4]) / (2 * np.pi))
+        return (found.phase - 2 * np.pi * turns).astype(np.float32)
 
     def unwrapping(self, recipe: Recipe, frame: int) -> Unwrapped | Skipped:
         """Return the unwrapped phase with its cuts."""

@@ -6,13 +6,13 @@ from collections.abc import Sequence
 from pathlib import Path
 
 from napari import Viewer
-from napari.layers import Image, Layer
+from napari.layers import Image
 
 from hologyre.recipe import Recipe
 from hologyre.stacks import as_stack, open_stack
 from hologyre.viewer.display import Display
 from hologyre.viewer.layers import placement
-from hologyre.viewer.session import Session, metadata_for, role_of, session_of
+from hologyre.viewer.session import Session, metadata_for, session_of
 from hologyre.viewer.styles import STACK_OPTIONS
 
 
@@ -95,8 +95,3 @@ def stack_layer(session: Session) -> tuple[object, dict[str, object], str]:
         },
         "image",
     )
-
-
-def stack_layers(viewer: Viewer) -> list[Layer]:
-    """Return the layers that hold holograms of a session."""
-    return [layer for layer in viewer.layers if role_of(layer) == "stack"]

@@ -7,12 +7,12 @@ from typing import Any
 import napari
 import numpy as np
 import xarray as xr
-from qtpy.QtCore import QTimer
 
 from hologyre.optics import Optics
 from hologyre.recipe import Recipe
 from hologyre.simulate.scenes import stage
 from hologyre.viewer.frames import FrameCache, lazy_frames
+from hologyre.viewer.launch import open_docks
 from hologyre.viewer.opening import stack_layer
 from hologyre.viewer.session import Session
 
@@ -44,8 +44,8 @@ def weak_fringes() -> list[LayerData]:
     return _sample("weak-fringes", "weak fringes")
 
 
-def scene_stack(scene: str) -> tuple[xr.DataArray, Optics]:
-    """Return a simulated scene as a lazy stack, and its optics."""
+def scene_stack(scene: str) -> tuple[xr.DataArray, Recipe]:
+    """Return a simulated scene as a lazy stack, and a recipe that knows its optics."""
     staged = stage(scene)
     made = FrameCache()
     first = staged.hologram(0)
@@ -66,16 +66,18 @@ def scene_stack(scene: str) -> tuple[xr.DataArray, Optics]:
             "pixel_um": None,
             "frame_interval_s": None,
             "bits": staged.setup.camera.bits,
-            "notes": (f"Simulation: {staged.scene.description}.",),
+            "notes": (),
         },
     )
-    return stack, staged.scene.optics
+    settings = _settings(staged.scene.optics)
+    settings["stack.notes"] = f"Simulation: {staged.scene.description}."
+    return stack, Recipe().with_settings(settings)
 
 
 def _sample(scene: str, name: str) -> list[LayerData]:
-    stack, optics = scene_stack(scene)
-    session = Session(stack, name=name, recipe=Recipe().with_settings(_settings(optics)))
-    _open_docks_soon()
+    stack, recipe = scene_stack(scene)
+    session = Session(stack, name=name, recipe=recipe)
+    _open_docks()
     return [stack_layer(session)]
 
 
@@ -94,10 +96,15 @@ def _settings(optics: Optics) -> dict[str, Any]:
     }
 
 
-def _open_docks_soon() -> None:
-    """Open the docks once napari has added the sample, where there is a window to put them in."""
+def _open_docks() -> None:
+    """Open the docks once the sample is there, so that a new user sees what can be done."""
     viewer = napari.current_viewer()
-    if viewer is not None:
-        from hologyre.viewer.launch import open_docks
+    if viewer is None:
+        return
 
-        QTimer.singleShot(0, lambda: open_docks(viewer))
+    def opened(event: Any) -> None:
+        viewer.layers.events.inserted.disconnect(opened)
+        open_docks(viewer)
+
+    # after napari has put the time slider in the middle
+    viewer.layers.events.inserted.connect(opened, position="last")

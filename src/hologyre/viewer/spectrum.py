@@ -17,7 +17,7 @@ _GRAB = 9.0
 _BACKGROUND = QColor(0, 0, 0)
 _BAND = QColor("#56B4E9")
 _ORDER = QColor("#E69F00")
-_TEXT = QColor("#BBBBBB")
+_TEXT = QColor("#888888")
 _PALETTE = [
     0xFF000000 | (int(r) << 16) | (int(g) << 8) | int(b)
     for r, g, b, _ in (colormaps["gray"](np.arange(256)) * 255).round()

@@ -53,7 +53,7 @@ STYLES: dict[Role, Style] = {
     "wavevectors": Style(
         "wavevectors",
         "vectors",
-        {"edge_color": ARROW, "edge_width": 2.0, "vector_style": "triangle", "opacity": 0.9},
+        {"edge_color": ARROW, "edge_width": 3.0, "vector_style": "triangle", "opacity": 0.9},
     ),
     "singularities": Style(
         "singularities",

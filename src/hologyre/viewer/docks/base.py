@@ -29,7 +29,7 @@ from hologyre.viewer.exporting import Table, export_all, export_table
 from hologyre.viewer.opening import candidate_layer, current_session, show_stack, use_layer
 from hologyre.viewer.session import Session
 
-WARN = "color: #E69F00;"
+WARN = "color: #D55E00;"
 
 
 class SessionDock(QWidget):
@@ -156,7 +156,7 @@ class SessionDock(QWidget):
         layers = self.viewer.layers
         for emitter in (layers.selection.events.active, layers.events.removed):
             emitter.connect(self._refresh)
-        layers.events.inserted.connect(self._refresh)
+        layers.events.inserted.connect(self._refresh, position="last")
         self._refresh()
 
     def _release(self) -> None:

@@ -16,13 +16,13 @@ _LABELS = {
     "motion.max_gap": "Frames missed at most",
 }
 _KINDS = {
-    "pair_birth": "pair births",
-    "pair_death": "pair deaths",
-    "entry": "entries",
-    "exit": "exits",
-    "split": "splits",
-    "merge": "merges",
-    "unexplained": "unexplained",
+    "pair_birth": "pair births ★",
+    "pair_death": "pair deaths ✕",
+    "entry": "entries ▲",
+    "exit": "exits ▼",
+    "split": "splits ◆",
+    "merge": "merges ■",
+    "unexplained": "unexplained ●",
 }
 
 

@@ -67,7 +67,8 @@ class OverviewDock(SessionDock):
 
     def _open_others(self) -> None:
         if self.parent() is not None:
-            launch.open_docks(self.viewer)
+            launch.open_steps(self.viewer)
+            self.parent().raise_()
 
 
 def _finding(name: str, session: Session) -> str:

@@ -13,7 +13,7 @@ from hologyre.viewer.forms import RecipeForm, section_paths
 from hologyre.viewer.maps import Skipped
 from hologyre.viewer.session import Session
 
-_LABELS = {"phase.weight": "Cut where amplitude is low"}
+_LABELS = {"phase.weight": "Weight of an edge"}
 
 
 class PhaseDock(SessionDock):
@@ -21,8 +21,8 @@ class PhaseDock(SessionDock):
 
     title = "Phase"
     help_text = (
-        "At a singularity no unwrapping is without a jump; cuts show where it lies. They are the "
-        "shortest possible."
+        "Around a singularity the phase cannot be without a jump; cuts show where it lies. The "
+        "cheapest cuts are taken."
     )
     action = "Unwrap"
     action_tip = (
@@ -31,7 +31,7 @@ class PhaseDock(SessionDock):
     )
 
     def __init__(self, napari_viewer: Viewer) -> None:
-        self.form = RecipeForm(section_paths("phase"))
+        self.form = RecipeForm(section_paths("phase"), labels=_LABELS)
         self.told = QLabel()
         self.told.setWordWrap(True)
         super().__init__(napari_viewer)

@@ -74,7 +74,7 @@ class StackDock(SessionDock):
             "Use it again", "Take the current frame back into use.", self._take_back
         )
         self.region_button = button(
-            "Take drawn rectangle",
+            "Use drawn rectangle as region",
             "Use only the pixels inside the rectangle drawn in a Shapes layer.",
             self._take_region,
         )
