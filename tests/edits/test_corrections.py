@@ -38,7 +38,7 @@ WHY: dict[str, Any] = {"reason": "seen by eye"}
 
 def assert_same(a: Corrected, b: Corrected) -> None:
     for name in TABLES:
-        assert_frame_equal(getattr(a, name), getattr(b, name))
+        assert_frame_equal(getattr(a, name), getattr(b, name), check_exact=True)
     assert a.misfits == b.misfits
 
 
@@ -244,9 +244,9 @@ def test_without_edits_the_tables_are_those_found(
     found: Found, table: pd.DataFrame, motion: Motion
 ) -> None:
     tables = replay((), found)
-    assert_frame_equal(tables.singularities, conform(table, SINGULARITIES))
-    assert_frame_equal(tables.trajectories, conform(motion.trajectories, TRAJECTORIES))
-    assert_frame_equal(tables.events, conform(motion.events, EVENTS))
+    assert_frame_equal(tables.singularities, conform(table, SINGULARITIES), check_exact=True)
+    assert_frame_equal(tables.trajectories, conform(motion.trajectories, TRAJECTORIES), check_exact=True)
+    assert_frame_equal(tables.events, conform(motion.events, EVENTS), check_exact=True)
 
 
 def test_an_edit_that_cannot_be_saved_is_not_done(found: Found, tmp_path: Path) -> None:

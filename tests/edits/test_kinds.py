@@ -3,6 +3,7 @@ from __future__ import annotations
 from datetime import datetime
 from typing import Any
 
+import numpy as np
 import pytest
 
 from hologyre.edits.kinds import (
@@ -79,3 +80,9 @@ def test_an_edit_that_makes_no_sense_is_refused(
 ) -> None:
     with pytest.raises(ValueError, match=told):
         kind(**values)
+
+
+def test_numbers_of_numpy_become_plain_ones() -> None:
+    edit = Delete(frame=np.int64(3), where=np.array([1, 2]), charge=np.int32(1))  # type: ignore[arg-type]
+    assert edit == Delete(frame=3, where=(1.0, 2.0), charge=1, time=edit.time)
+    assert [type(v) for v in (edit.frame, edit.charge, *edit.where)] == [int, int, float, float]

@@ -55,7 +55,7 @@ class Corrected:
 
 def tables_of(state: State, misfits: tuple[Misfit, ...] = ()) -> Corrected:
     """Lay out the tables of a state."""
-    rows = _all_rows(state)
+    rows = pd.DataFrame(_laid_out(state, np.arange(len(state.found.table)), sorted(state.rows)))
     regions = [edit for edit in state.drawn.values() if isinstance(edit, Region)]
     inside = used(regions, rows["frame"], rows["y_px"], rows["x_px"])
     events = _events(state)
@@ -90,19 +90,16 @@ def frame_rows(state: State, frame: int) -> pd.DataFrame:
         in parts that are not to be used are in it too.
     """
     part = state.found.rows_of(frame)
-    rows = _laid_out(state, np.arange(part.start, part.stop), state.touched_in(frame))
-    track = rows["track"]
-    return conform(rows.drop(columns=["track", "link", "previous"]), SINGULARITIES).assign(
-        track=track
+    values = _laid_out(state, np.arange(part.start, part.stop), state.touched_in(frame))
+    return pd.DataFrame(
+        {name: values[name] for name in (*(c.name for c in SINGULARITIES), "track")}
     )
 
 
-def _all_rows(state: State) -> pd.DataFrame:
-    return _laid_out(state, np.arange(len(state.found.table)), sorted(state.rows))
-
-
-def _laid_out(state: State, found_rows: NDArray[np.int64], touched: list[int]) -> pd.DataFrame:
-    """Return the rows with `track`, `link` and the id of the `previous` row, sorted."""
+def _laid_out(
+    state: State, found_rows: NDArray[np.int64], touched: list[int]
+) -> dict[str, NDArray[Any]]:
+    """Return the rows' columns, `track`, `link` and the id of the `previous` row too, sorted."""
     found, count = state.found, len(state.found.table)
     first = int(found_rows[0]) if len(found_rows) else 0
     rest = np.ones(len(found_rows), np.bool_)
@@ -119,7 +116,7 @@ def _laid_out(state: State, found_rows: NDArray[np.int64], touched: list[int]) -
     values["previous"] = np.append(ids, np.zeros(len(changed), np.int64))
     _put_changed(state, changed, {name: v[len(index) :] for name, v in values.items()})
     order = np.lexsort((values["singularity"], values["frame"]))
-    return pd.DataFrame({name: column[order] for name, column in values.items()})
+    return {name: column[order] for name, column in values.items()}
 
 
 def _put_changed(state: State, rows: list[int], values: dict[str, NDArray[Any]]) -> None:

@@ -5,7 +5,10 @@ from __future__ import annotations
 from dataclasses import dataclass, field, fields
 from datetime import UTC, datetime
 from math import isfinite
+from numbers import Integral, Real
 from typing import Any, ClassVar, Literal, get_args
+
+import numpy as np
 
 Point = tuple[float, float]
 """A place (y_px, x_px) on the hologram's own pixels."""
@@ -52,6 +55,9 @@ class Edit:
     reason: str = ""
 
     def __post_init__(self) -> None:
+        for one in fields(self):
+            plain = _plain(getattr(self, one.name), one.name in ("where", "to"))
+            object.__setattr__(self, one.name, plain)
         drawn = isinstance(self, (Barrier, Bridge, Region))
         if not (_whole(self.frame, 0) or (drawn and self.frame is None)):
             takes = "a frame number" + (" or None" if drawn else "")
@@ -343,6 +349,17 @@ KINDS: dict[str, type[Edit]] = {
     )
 }
 """Every kind of edit by the name it has in a log."""
+
+
+def _plain(value: Any, place: bool) -> Any:
+    """Turn numbers of any kind into Python's own, and lists of places into tuples."""
+    if isinstance(value, bool):
+        return value
+    if place and isinstance(value, list | tuple | np.ndarray):
+        return tuple(_plain(v, place) for v in value)
+    if isinstance(value, Real) and place:
+        return float(value)
+    return int(value) if isinstance(value, Integral) else value
 
 
 def _whole(value: Any, least: int | None = None) -> bool:

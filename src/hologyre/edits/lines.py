@@ -118,7 +118,7 @@ def _edit(kind: type[Edit], line: dict[str, Any]) -> Edit:
     for name in ("time", "frame", "where"):
         if name not in line:
             raise ValueError(f"{name}: is missing")
-    values: dict[str, Any] = {"where": _places(line["where"])}
+    values: dict[str, Any] = {"where": line["where"]}
     values |= {name: line[name] for name in ("time", "author", "reason", "frame") if name in line}
     optional = {one.name for one in fields(kind) if one.default is not MISSING}
     for part, known in inner.items():
@@ -130,17 +130,10 @@ def _edit(kind: type[Edit], line: dict[str, Any]) -> Edit:
             _refuse_unknown(held, tuple(known), prefix)
         for key, name in known.items():
             if key in held:
-                values[name] = _places(held[key]) if key == "where" else held[key]
+                values[name] = held[key]
             elif name not in optional:
                 raise ValueError(f"{prefix}{key}: is missing")
     return kind(**values)
-
-
-def _places(value: Any) -> Any:
-    """Turn JSON lists into tuples and whole numbers among them into floats."""
-    if isinstance(value, list):
-        return tuple(_places(v) for v in value)
-    return float(value) if isinstance(value, int) and not isinstance(value, bool) else value
 
 
 def _mapping(text: str) -> dict[str, Any]:
