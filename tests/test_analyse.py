@@ -10,9 +10,20 @@ import numpy as np
 import pandas as pd
 import pytest
 import tifffile
+from distributed import LocalCluster
 from numpy.typing import NDArray
 
-from hologyre.analyse import Analysis, FrameResult, analyse, frame_table, inspect, iter_frames, plan
+from hologyre.analyse import (
+    Analysis,
+    ClusterError,
+    FrameResult,
+    analyse,
+    connect,
+    frame_table,
+    inspect,
+    iter_frames,
+    plan,
+)
 from hologyre.fields.interpolate import evaluate, on_pixels
 from hologyre.motion import Motion
 from hologyre.recipe import Recipe, RecipeError
@@ -241,6 +252,26 @@ def assert_same(one: FrameResult, other: FrameResult) -> None:
     np.testing.assert_equal(one.row, other.row)
     if one.field is not None and other.field is not None:
         np.testing.assert_array_equal(one.field.values, other.field.values)
+
+
+def test_results_are_the_same_on_a_dask_cluster(stack_file: Path, recipe: Recipe) -> None:
+    planned = plan(open_stack(stack_file), recipe)
+    with (
+        LocalCluster(
+            n_workers=1, threads_per_worker=2, processes=False, dashboard_address=None
+        ) as cluster,
+        connect(cluster.scheduler_address) as client,
+    ):
+        together = list(iter_frames(planned, client=client))
+        with closing(iter_frames(planned, client=client)) as frames:
+            assert next(frames).frame == 0
+    for one, other in zip(iter_frames(planned), together, strict=True):
+        assert_same(one, other)
+
+
+def test_address_without_a_scheduler_is_told() -> None:
+    with pytest.raises(ClusterError, match=r"nowhere: no dask scheduler answers .*tcp://host:port"):
+        connect("nowhere")
 
 
 @pytest.mark.parametrize("workers", [1, 2])

@@ -9,6 +9,7 @@ import time
 from collections.abc import Iterator
 from dataclasses import dataclass
 from pathlib import Path
+from types import SimpleNamespace
 from typing import Any
 
 import numpy as np
@@ -150,6 +151,45 @@ def test_quoted_pattern_is_one_stack(
     done = hologyre("run", tmp_path / "f*.tif", "--out", tmp_path / "out")
     assert done.status == 0
     assert len(load_result(tmp_path / "out").frames) == 3
+
+
+def test_many_single_frames_are_told_how_to_become_one_stack(
+    hologyre: Any, holograms: NDArray[Any], tmp_path: Path
+) -> None:
+    files = [tmp_path / f"f{n}.tif" for n in range(4)]
+    for file in files:
+        tifffile.imwrite(file, holograms[0])
+    done = hologyre("run", *files, "--out", tmp_path / "out")
+    assert done.status == 0
+    assert "4 files of one frame each are taken for as many stacks; quote a pattern" in done.err
+
+
+def test_view_opens_the_stack_with_the_result_beside_it(
+    hologyre: Any, stack_file: Path, tmp_path: Path, monkeypatch: pytest.MonkeyPatch
+) -> None:
+    stack = tmp_path / "a.tif"
+    stack.write_bytes(stack_file.read_bytes())
+    seen: list[Any] = []
+    launch = SimpleNamespace(view=lambda source, result: seen.append((source, result)))
+    monkeypatch.setitem(sys.modules, "napari", SimpleNamespace(run=lambda: seen.append("run")))
+    monkeypatch.setitem(sys.modules, "hologyre.viewer.launch", launch)
+    assert hologyre("view", stack).status == 0
+    assert hologyre("run", stack, "--frames", ":1").status == 0
+    assert hologyre("view", stack).status == 0
+    assert hologyre("view", stack, "--result", tmp_path).status == 0
+    beside = tmp_path / "a.hologyre"
+    opened = [(str(stack), None), (str(stack), beside), (str(stack), tmp_path)]
+    assert seen == [opened[0], "run", opened[1], "run", opened[2], "run"]
+
+
+def test_simulate_writes_a_stack_that_runs(hologyre: Any, tmp_path: Path) -> None:
+    done = hologyre("simulate", "weak-fringes", "--out", tmp_path / "sim")
+    assert done.status == 0
+    stack = next((tmp_path / "sim").glob("*.tif"))
+    assert f"stack: {stack}" in done.out
+    again = hologyre("simulate", "weak-fringes", "--out", tmp_path / "sim")
+    assert again.status == 2
+    assert "choose another folder by --out" in again.err
 
 
 def test_skipped_frames_are_told_and_the_run_is_done(

@@ -26,6 +26,9 @@ if TYPE_CHECKING:
 
 _COUNTS = ("frames", "done", "skipped", "singularities", "tracks", "events")
 
+# from here on single frames are more likely to be one time-lapse
+_MANY = 3
+
 Failures = list[tuple[str, str]]
 
 
@@ -48,6 +51,11 @@ def run_all(
     over. Alone, its error is raised.
     """
     opened, failures = _open(sources)
+    if len(opened) > _MANY and all(stack.sizes["t"] == 1 for stack in opened):
+        complain(
+            f"{len(opened)} files of one frame each are taken for as many stacks; quote a pattern, "
+            "as 'run1/*.tif', to make them one."
+        )
     places = [default_folder(stack) for stack in opened]
     if out is not None:
         names = [stack.attrs["name"] for stack in opened]
