@@ -17,8 +17,12 @@ FORBIDDEN = -1
 """Cost of an arc that no flow may use."""
 
 LARGEST_COST = 4095
-_UNSEEN = np.iinfo(np.int32).max
+_UNSEEN = np.int32(2**31 - 1)
+_FARTHEST = 2**28
 _TILE = 64
+_NONE = np.uint32(2**32 - 1)
+_PLAIN, _POSITIVE, _NEGATIVE, _EARTH = 0, 1, 2, 3
+_TOO_FAR, _STUCK, _FULL = -1, -2, -3
 
 
 class Flow(NamedTuple):
@@ -69,109 +73,141 @@ def cheapest_flow(
     M. Costantini, IEEE Trans. Geosci. Remote Sens. 36, 813 (1998).
     """
     ny, nx = charge.shape[0] + 1, charge.shape[1] + 1
-    excess = np.zeros((ny + 1, nx + 1), np.int32)
+    if earth is None:
+        earth = np.broadcast_to(np.bool_(False), charge.shape)
+    nodes = np.empty((ny + 1, nx + 1, 4), np.int32)
+    _lay_out(nodes, nodes.view(np.int16), charge, cost_y, cost_x, earth)
+    excess = np.zeros(nodes.shape[:2], np.int32)
     excess[1:ny, 1:nx] = charge
-    is_earth = np.ones((ny + 1, nx + 1), np.bool_)
-    is_earth[1:ny, 1:nx] = False if earth is None else earth
-    arcs = _arcs(cost_y, cost_x)
+    jump_y = np.zeros((ny - 1, nx), np.int32)
+    jump_x = np.zeros((ny, nx - 1), np.int32)
     largest = int(max(cost_y.max(initial=0), cost_x.max(initial=0), 1))
-    flow, state, stuck = _solve(excess, is_earth, arcs, largest)
-    j, i = divmod(stuck, nx + 1) if stuck >= 0 else (0, 0)
-    flow = flow.reshape(ny + 1, nx + 1, 2)
-    return Flow(
-        jump_y=-flow[1:ny, :nx, 0],
-        jump_x=np.ascontiguousarray(flow[:ny, 1:nx, 1]),
-        potential=np.ascontiguousarray(state.reshape(ny + 1, nx + 1, 2)[1:ny, 1:nx, 0]),
-        stuck=(j - 1, i - 1),
+    # A first reach that takes a search over a few edges, whatever the costs are.
+    reach = 1 + int(2.5 * max(cost_y.mean(), 0.0))
+    stuck = _solve(
+        nodes.reshape(-1, 4),
+        nodes.reshape(-1, 4).view(np.int16),
+        excess.ravel(),
+        _charged(nodes),
+        nx + 1,
+        largest,
+        reach,
+        jump_y,
+        jump_x,
     )
+    j, i = divmod(stuck, nx + 1) if stuck >= 0 else (0, 0)
+    return Flow(jump_y, jump_x, nodes[1:ny, 1:nx, 0] >> 2, (j - 1, i - 1))
 
 
-# An arc's code is 4 * cost, + 1 when flow leaves the node by it, + 2 when flow comes in by
-# it, + 3 when it is forbidden. Directions: 0 right, 1 left, 2 down, 3 up.
+# One record of 16 bytes a node, so that a search touches few lines of memory:
+#   nodes[n, 0]     4 * potential + kind; the earth has the bits of both signs, so that one
+#                   test finds the goals of a search
+#   nodes[n, 1]     4 * distance + direction it was reached by, or _UNSEEN
+#   arcs[n, 4 + k]  (the same memory as int16) 4 * cost of the arc in direction k, + 1 when
+#                   flow leaves by it, + 2 when flow comes in by it; -1 when forbidden
+# Directions: 0 right, 1 left, 2 down, 3 up. Node (J, I) is plaquette (J - 1, I - 1); the rim
+# around them is earth. Indices are unsigned in the inner loop: numba checks signed ones for
+# being negative.
 @njit(cache=True, nogil=True)
-def _arcs(cost_y: NDArray[np.int16], cost_x: NDArray[np.int16]) -> NDArray[np.int16]:
-    ny, nx = cost_x.shape[0], cost_y.shape[1]
-    width = nx + 1
-    arcs = np.full(((ny + 1) * width, 4), np.int16(3))
-    for j in range(ny - 1):
-        for i in range(nx):
-            left = (j + 1) * width + i
-            code = np.int16(4 * cost_y[j, i]) if cost_y[j, i] >= 0 else np.int16(3)
-            arcs[left, 0] = code
-            arcs[left + 1, 1] = code
-    for j in range(ny):
-        for i in range(nx - 1):
-            upper = j * width + i + 1
-            code = np.int16(4 * cost_x[j, i]) if cost_x[j, i] >= 0 else np.int16(3)
-            arcs[upper, 2] = code
-            arcs[upper + width, 3] = code
-    return arcs
+def _lay_out(
+    nodes: NDArray[np.int32],
+    arcs: NDArray[np.int16],
+    charge: NDArray[np.integer],
+    cost_y: NDArray[np.int16],
+    cost_x: NDArray[np.int16],
+    earth: NDArray[np.bool_],
+) -> None:
+    height, width = nodes.shape[:2]
+    nodes[0, :, 0] = nodes[-1, :, 0] = _EARTH
+    nodes[:, 0, 0] = nodes[:, -1, 0] = _EARTH
+    nodes[:, :, 1] = _UNSEEN
+    arcs[0, :, 4:] = arcs[-1, :, 4:] = -1
+    arcs[:, 0, 4:] = arcs[:, -1, 4:] = -1
+    for j in range(1, height - 1):
+        for i in range(1, width - 1):
+            kind = _PLAIN
+            if earth[j - 1, i - 1]:
+                kind = _EARTH
+            elif charge[j - 1, i - 1] != 0:
+                kind = _POSITIVE if charge[j - 1, i - 1] > 0 else _NEGATIVE
+            nodes[j, i, 0] = kind
+            arcs[j, i, 4] = max(4 * cost_y[j - 1, i], -1)
+            arcs[j, i, 5] = max(4 * cost_y[j - 1, i - 1], -1)
+            arcs[j, i, 6] = max(4 * cost_x[j, i - 1], -1)
+            arcs[j, i, 7] = max(4 * cost_x[j - 1, i - 1], -1)
 
 
 @njit(cache=True, nogil=True)
-def _sources(excess: NDArray[np.int32], is_earth: NDArray[np.bool_]) -> NDArray[np.int64]:
+def _charged(nodes: NDArray[np.int32]) -> NDArray[np.int64]:
     """List the charged nodes, tile by tile so that neighbours stay close in memory."""
-    height, width = excess.shape
-    count = 0
-    for j in range(height):
-        for i in range(width):
-            if excess[j, i] != 0 and not is_earth[j, i]:
-                count += 1
-    nodes = np.empty(count, np.int64)
+    height, width = nodes.shape[:2]
+    charged = np.empty(height * width // 8 + 16, np.int64)
     count = 0
     for top in range(0, height, _TILE):
         for left in range(0, width, _TILE):
             for j in range(top, min(top + _TILE, height)):
                 for i in range(left, min(left + _TILE, width)):
-                    if excess[j, i] != 0 and not is_earth[j, i]:
-                        nodes[count] = j * width + i
+                    if nodes[j, i, 0] & 3 in (_POSITIVE, _NEGATIVE):
+                        if count == charged.size:
+                            more = np.empty(2 * count, np.int64)
+                            more[:count] = charged
+                            charged = more
+                        charged[count] = j * width + i
                         count += 1
-    return nodes
+    return charged[:count]
 
 
 @njit(cache=True, nogil=True)
 def _solve(
-    excess_map: NDArray[np.int32],
-    earth_map: NDArray[np.bool_],
+    nodes: NDArray[np.int32],
     arcs: NDArray[np.int16],
+    excess: NDArray[np.int32],
+    charged: NDArray[np.int64],
+    width: int,
     largest: int,
-) -> tuple[NDArray[np.int32], NDArray[np.int32], int]:
-    width = excess_map.shape[1]
-    nodes = _sources(excess_map, earth_map)
-    excess, earth = excess_map.ravel(), earth_map.ravel()
-    flow = np.zeros((excess.size, 2), np.int32)
-    state = np.empty((excess.size, 2), np.int32)  # potential, distance
-    state[:, 0] = 0
-    state[:, 1] = _UNSEEN
-    parent = np.empty(excess.size, np.int8)
+    reach: int,
+    jump_y: NDArray[np.int32],
+    jump_x: NDArray[np.int32],
+) -> int:
+    """Take all charges away; return -1, or the node of one that reaches nothing.
+
+    Searches go in rounds of growing reach, from both signs in turn, so that near residues
+    find each other first and the potentials of both grow alike: later searches then have
+    much less ground to cover than when each residue in turn is matched for good.
+    """
     buckets = 4
     while buckets < 2 * largest + 2:
         buckets *= 2
-    head = np.full(buckets, np.int32(-1))
-    pool = np.empty((1 << 12, 2), np.int32)  # node, next
-    step = np.array((1, -1, width, -width), np.int64)
-    reach = 4 * largest
-    left = nodes.size
+    head = np.full(buckets, _NONE)
+    pool = np.empty((1 << 14, 2), np.uint32)  # node, next in the bucket
+    step = np.array((1, -1, width, -width), np.int64).view(np.uint64)
+    left = charged.size
     while left > 0:
         for sign in (1, -1):
-            for node in nodes[:left]:
-                while sign * excess[node] > 0:
-                    goal, pool = _search(
-                        node, sign, reach, excess, earth, arcs, state, parent, head, pool, step
+            for source in charged[:left]:
+                while sign * excess[source] > 0:
+                    goal, distance, top = _search(
+                        np.uint64(source), sign, reach, nodes, arcs, head, pool, step
                     )
-                    if goal == -2:
-                        return flow, state, node
-                    if goal == -1:
+                    if goal == _FULL:
+                        _settle(0, sign, top, nodes, pool)
+                        pool = np.empty((4 * pool.shape[0], 2), np.uint32)
+                        continue
+                    if goal == _STUCK:
+                        return source
+                    if goal >= 0:
+                        _push(source, goal, sign, width, excess, nodes, arcs, jump_y, jump_x)
+                    _settle(distance, sign, top, nodes, pool)
+                    if goal == _TOO_FAR:
                         break
-                    _push(node, goal, sign, excess, earth, arcs, flow, parent, step)
         kept = 0
-        for node in nodes[:left]:
+        for node in charged[:left]:
             if excess[node] != 0:
-                nodes[kept] = node
+                charged[kept] = node
                 kept += 1
         left = kept
-        reach = min(2 * reach, _UNSEEN // 4)
-    return flow, state, -1
+        reach = min(reach + reach // 2 + 1, _FARTHEST)
+    return -1
 
 
 @njit(cache=True, nogil=True)
@@ -179,76 +215,87 @@ def _search(
     source: int,
     sign: int,
     reach: int,
-    excess: NDArray[np.int32],
-    earth: NDArray[np.bool_],
+    nodes: NDArray[np.int32],
     arcs: NDArray[np.int16],
-    state: NDArray[np.int32],
-    parent: NDArray[np.int8],
-    head: NDArray[np.int32],
-    pool: NDArray[np.int32],
-    step: NDArray[np.int64],
-) -> tuple[int, NDArray[np.int32]]:
-    """Find the nearest goal within reach; return it, or -1, or -2 when all is explored.
+    head: NDArray[np.uint32],
+    pool: NDArray[np.uint32],
+    step: NDArray[np.uint64],
+) -> tuple[int, int, int]:
+    """Find the nearest goal: the earth or a charge of the other sign.
 
-    Goals are the earth and charges of the other sign. Distances are in reduced costs, in
-    a ring of buckets. Potentials of the nodes settled move so that reduced costs stay >= 0.
+    Distances are in reduced costs, in a ring of buckets. Returns the goal (or why there is
+    none), its distance (or the reach) and how many entries of the pool were used.
     """
-    mask = head.size - 1
-    state[source, 1] = 0
+    mask = np.uint64(head.size - 1)
+    inflow = np.int32(1 if sign > 0 else 0)
+    wanted = np.int32(_NEGATIVE if sign > 0 else _POSITIVE)
+    sense = np.int32(sign)
+    room = np.uint64(pool.shape[0] - 4)
+    nodes[source, 1] = 0
     pool[0, 0] = source
-    pool[0, 1] = -1
+    pool[0, 1] = _NONE
     head[0] = 0
-    top, pending = 1, 1
-    distance = 0
-    goal = -1
-    while goal == -1 and distance < reach:
-        entry = head[distance & mask]
-        if entry < 0:
-            distance += 1
+    top = np.uint64(1)
+    pending = 1
+    distance = np.int32(0)
+    limit = np.int32(reach)
+    goal = np.int64(_STUCK)
+    while pending > 0 and distance < limit:
+        slot = np.uint64(distance) & mask
+        if head[slot] == _NONE:
+            distance += np.int32(1)
             continue
-        node = pool[entry, 0]
-        head[distance & mask] = pool[entry, 1]
+        entry = np.uint64(head[slot])
+        node = np.uint64(pool[entry, 0])
+        head[slot] = pool[entry, 1]
         pending -= 1
-        if state[node, 1] != distance:
-            if pending == 0:
-                goal = -2
+        if nodes[node, 1] >> 2 != distance:
             continue
-        if earth[node] or sign * excess[node] < 0:
-            goal = node
+        if top > room:
+            goal = np.int64(_FULL)
             break
-        if top + 4 > pool.shape[0]:
-            larger = np.empty((2 * pool.shape[0], 2), np.int32)
-            larger[:top] = pool[:top]
-            pool = larger
-        here = state[node, 0]
+        here = np.int32(distance - sense * (nodes[node, 0] >> 2))
         for k in range(4):
-            code = arcs[node, k]
-            flag = code & 3
-            if flag == 3:
+            code = np.int32(arcs[node, np.uint64(4 + k)])
+            if code < 0:
                 continue
-            cost = code >> 2
-            if (sign > 0 and flag == 2) or (sign < 0 and flag == 1):
-                cost = -cost
-            there = node + step[k]
-            reached = distance + cost + sign * (state[there, 0] - here)
-            if reached < state[there, 1]:
-                state[there, 1] = reached
-                parent[there] = k
-                slot = reached & mask
+            cost = np.int32(code >> 2)
+            if (code >> inflow) & 1:
+                cost = np.int32(-cost)
+            there = node + step[np.uint64(k)]
+            word = nodes[there, 0]
+            reached = np.int32(here + cost + sense * (word >> 2))
+            if reached < min(limit, nodes[there, 1] >> 2):
+                nodes[there, 1] = (reached << 2) + k
                 pool[top, 0] = there
+                if word & wanted:
+                    goal = np.int64(there)
+                    limit = reached
+                    top += np.uint64(1)
+                    continue
+                slot = np.uint64(reached) & mask
                 pool[top, 1] = head[slot]
                 head[slot] = top
-                top += 1
+                top += np.uint64(1)
                 pending += 1
-        if pending == 0:
-            goal = -2
-    for entry in range(top):
-        node = pool[entry, 0]
-        if goal != -2 and state[node, 1] < distance:
-            state[node, 0] += sign * (distance - state[node, 1])
-        state[node, 1] = _UNSEEN
-    head[:] = -1
-    return goal, pool
+            elif goal == _STUCK and reached >= limit:
+                goal = np.int64(_TOO_FAR)
+    head[:] = _NONE
+    return int(goal), int(limit), int(top)
+
+
+@njit(cache=True, nogil=True)
+def _settle(
+    distance: int, sign: int, top: int, nodes: NDArray[np.int32], pool: NDArray[np.uint32]
+) -> None:
+    """Move potentials so that reduced costs stay >= 0, and forget the distances."""
+    sense = np.int32(sign)
+    for entry in range(np.uint64(top)):
+        node = np.uint64(pool[entry, 0])
+        ahead = np.int32(distance - (nodes[node, 1] >> 2))
+        nodes[node, 1] = _UNSEEN
+        if ahead > 0:
+            nodes[node, 0] += sense * (ahead << 2)
 
 
 @njit(cache=True, nogil=True)
@@ -256,28 +303,38 @@ def _push(
     source: int,
     goal: int,
     sign: int,
+    width: int,
     excess: NDArray[np.int32],
-    earth: NDArray[np.bool_],
+    nodes: NDArray[np.int32],
     arcs: NDArray[np.int16],
-    flow: NDArray[np.int32],
-    parent: NDArray[np.int8],
-    step: NDArray[np.int64],
+    jump_y: NDArray[np.int32],
+    jump_x: NDArray[np.int32],
 ) -> None:
     """Send one unit along the path found."""
     excess[source] -= sign
-    if not earth[goal]:
+    if excess[source] == 0:
+        nodes[source, 0] &= ~3
+    if nodes[goal, 0] & 3 != _EARTH:
         excess[goal] += sign
-    there = goal
-    while there != source:
-        k = parent[there]
-        here = there - step[k]
-        low = min(here, there)
-        axis = k >> 1
-        flow[low, axis] += sign * (1 - 2 * (k & 1))
-        amount = flow[low, axis]
-        code = (arcs[low, 2 * axis] >> 2) << 2
-        out = np.int16(1) if amount > 0 else (np.int16(2) if amount < 0 else np.int16(0))
-        back = np.int16(2) if amount > 0 else (np.int16(1) if amount < 0 else np.int16(0))
-        arcs[low, 2 * axis] = code + out
-        arcs[low + step[2 * axis], 2 * axis + 1] = code + back
-        there = here
+        if excess[goal] == 0:
+            nodes[goal, 0] &= ~3
+    node = goal
+    while node != source:
+        k = nodes[node, 1] & 3
+        stride = 1 if k < 2 else width
+        before = node + stride if k & 1 else node - stride
+        low = min(before, node)
+        unit = -sign if k & 1 else sign
+        j, i = low // width, low % width
+        # Flow to the right or down, that is from `low`.
+        if k < 2:
+            jump_y[j - 1, i] -= unit
+            amount = -jump_y[j - 1, i]
+        else:
+            jump_x[j, i - 1] += unit
+            amount = jump_x[j, i - 1]
+        right = 4 if k < 2 else 6
+        code = max(arcs[low, right], arcs[low + stride, right + 1]) & ~3
+        arcs[low, right] = code + (amount > 0) + 2 * (amount < 0)
+        arcs[low + stride, right + 1] = code + 2 * (amount > 0) + (amount < 0)
+        node = before
