@@ -477,3 +477,21 @@ def test_trajectories_of_other_singularities_are_refused() -> None:
     motion = link_singularities(table)
     with pytest.raises(ValueError, match="motion: expected every singularity in one track, got"):
         found_of(table.iloc[:-1], motion)
+
+
+def test_the_border_of_a_region_that_was_searched_is_where_singularities_cross(
+    work: Corrections,
+) -> None:
+    table = built()
+    inside = table[(table["y_px"] > 50) & (table["x_px"] > 50)]
+    motion = link_singularities(inside, max_step_px=3.0)
+    found = found_of(inside, motion, frame_shape=SHAPE, region=(50, 100, 50, 100), max_step_px=3.0)
+    cropped = Corrections(found)
+    place = Place(frame=2, where=(70.0, 50.02), charge=1, winding=1)
+    for one, crossings in ((cropped, 2), (work, 0)):
+        before = [k[0] for k in kinds(one)].count("entry") + [k[0] for k in kinds(one)].count(
+            "exit"
+        )
+        assert one.do(place)
+        after = [k[0] for k in kinds(one)].count("entry") + [k[0] for k in kinds(one)].count("exit")
+        assert after - before == crossings

@@ -245,7 +245,9 @@ def test_without_edits_the_tables_are_those_found(
 ) -> None:
     tables = replay((), found)
     assert_frame_equal(tables.singularities, conform(table, SINGULARITIES), check_exact=True)
-    assert_frame_equal(tables.trajectories, conform(motion.trajectories, TRAJECTORIES), check_exact=True)
+    assert_frame_equal(
+        tables.trajectories, conform(motion.trajectories, TRAJECTORIES), check_exact=True
+    )
     assert_frame_equal(tables.events, conform(motion.events, EVENTS), check_exact=True)
 
 

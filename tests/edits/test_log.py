@@ -8,7 +8,7 @@ from hypothesis import given
 from hypothesis import strategies as st
 
 from hologyre.edits.kinds import Delete, Edit
-from hologyre.edits.log import NAME, Log, LogError
+from hologyre.edits.log import NAME, Log, LogError, load_log
 
 WHEN = "2026-03-01T09:30:00Z"
 
@@ -210,3 +210,10 @@ def test_a_log_that_cannot_be_written_says_so_and_keeps_its_state(tmp_path: Path
     with pytest.raises(LogError, match=r"the edit could not be saved: .*; it was not made"):
         log.append(deletion(0))
     assert log.edits == ()
+
+
+def test_a_log_that_is_asked_for_must_be_there(tmp_path: Path) -> None:
+    with pytest.raises(LogError, match=r"there is no such log; name the edits\.jsonl that lies in"):
+        load_log(tmp_path / NAME)
+    written(tmp_path / NAME, 2)
+    assert len(load_log(tmp_path / NAME).edits) == 2

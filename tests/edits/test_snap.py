@@ -6,10 +6,12 @@ import numpy as np
 import pandas as pd
 import pytest
 
+from hologyre.edits.remeasure import remeasure
 from hologyre.edits.snap import NoZero, snap
 from hologyre.grid import Field, Grid, Window
 from hologyre.simulate.waves import RandomWaves
 from hologyre.simulate.zeros import find_zeros
+from hologyre.tables import SINGULARITIES, conform
 
 BOX, SHORTEST = 96.0, 12.0
 
@@ -123,3 +125,30 @@ def test_a_stack_of_frames_is_refused() -> None:
     several = field.with_values(np.stack([field.values] * 2))
     with pytest.raises(ValueError, match="expected one complex frame"):
         snap(several, 5.0, 5.0)
+
+
+def test_what_was_put_in_by_hand_is_measured_again(truth: pd.DataFrame) -> None:
+    y, x, charge = truth[["y_px", "x_px", "charge"]].iloc[20]
+    rows = pd.DataFrame(
+        {
+            "frame": [4, 4, 4, 4],
+            "singularity": range(4),
+            "y_px": [y + 0.01, y, y, y],
+            "x_px": [x, x, x, x],
+            "charge": [int(charge), -int(charge), int(charge), int(charge)],
+            "origin": ["placed", "moved", "found", "placed"],
+        }
+    )
+    rows.loc[3, ["y_px", "x_px"]] = [-5.0, -5.0]
+    asked: list[int] = []
+
+    def field_of(frame: int) -> Field:
+        asked.append(frame)
+        return speckle(2.2)
+
+    told = remeasure(conform(rows, SINGULARITIES), field_of)
+    assert asked == [4]
+    assert told["singularity"].tolist() == [0, 1, 3]
+    assert told["winding"].tolist() == [charge, charge, 0]
+    assert told["distance_px"].iloc[0] == pytest.approx(0.01, abs=1e-6)
+    assert np.isnan(told["distance_px"].iloc[2])

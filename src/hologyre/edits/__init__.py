@@ -25,9 +25,10 @@ from hologyre.edits.kinds import (
     RenameTrack,
 )
 from hologyre.edits.lines import Entry
-from hologyre.edits.log import NAME, Log, LogError, NothingToStep
+from hologyre.edits.log import NAME, Log, LogError, NothingToStep, load_log
 from hologyre.edits.recount import recount
 from hologyre.edits.regions import barriers, bridges, used_pixels
+from hologyre.edits.remeasure import remeasure
 from hologyre.edits.review import review
 from hologyre.edits.snap import NoZero, Snap, snap
 
@@ -64,7 +65,9 @@ __all__ = [
     "bridges",
     "compare",
     "found_of",
+    "load_log",
     "recount",
+    "remeasure",
     "replay",
     "review",
     "snap",

@@ -116,11 +116,23 @@ def found_of(
     *,
     frames: ArrayLike | None = None,
     frame_shape: tuple[int, int] | None = None,
+    region: tuple[int, int, int, int] | None = None,
     margin_px: float = 0.0,
     max_step_px: float | Literal["auto"] = "auto",
     max_gap: int = 2,
 ) -> Found:
     """Lay out what a run found; options as `link_singularities` takes them.
+
+    Parameters
+    ----------
+    singularities : DataFrame
+        Columns `hologyre.tables.SINGULARITIES`, as found, without any edits. Not changed.
+    motion : Motion
+        What linking them gave; empty tables if they are not linked.
+    frames, frame_shape, margin_px, max_step_px, max_gap
+        As they were linked with.
+    region : (int, int, int, int), optional
+        y_first, y_end, x_first, x_end, ends not included, if only this part was searched.
 
     Raises
     ------
@@ -156,6 +168,10 @@ def found_of(
         same = np.flatnonzero(number[1:] == number[:-1])
         previous[row[same + 1]], following[row[same]] = row[same], row[same + 1]
     border = border_of(table, frame_shape, margin_px)
+    if region is not None:
+        top, bottom, left, right = region
+        m = margin_px
+        border = Window(top + m, bottom - 1.0 - m, left + m, right - 1.0 - m)
     searched = searched_frames(table, frames)
     law, reach, spacing = _scales(table, previous, border, len(searched), max_step_px)
     return Found(

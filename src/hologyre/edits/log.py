@@ -208,6 +208,21 @@ class Log:
         self._size = self._keep = self._keep + len(added)
 
 
+def load_log(path: str | Path) -> Log:
+    """Read a log that must be there.
+
+    Raises
+    ------
+    LogError
+        If there is no such file, or it cannot be read.
+    """
+    if not Path(path).is_file():
+        raise LogError(
+            f"{path}: there is no such log; name the {NAME} that lies in a result folder."
+        )
+    return Log(path)
+
+
 def _torn(path: Path, number: int, raw: bytes) -> str:
     return (
         f"{path}, line {number}: this last line is broken off after {len(raw)} bytes and was left "
