@@ -43,12 +43,14 @@ def test_the_phase_of_a_frame_does_not_change_velocities(slow_speckle):
     np.testing.assert_allclose(a["vy_px_per_frame"], b["vy_px_per_frame"], rtol=1e-6)
 
 
-def test_errors_of_velocities_tell_how_far_off_they_are(field_at, zeros_of):
+def test_errors_of_velocities_tell_how_far_off_they_are(field_at):
     wave = RandomWaves("disc", 12.0, 0.5, seed=2, box_px=144.0)
     window = Window(0.0, 143.0, 0.0, 143.0)
     rng = np.random.default_rng(0)
     fields = [field_at(wave, float(t), (144.0, 144.0), (30, 30), window) for t in range(8)]
-    table = zeros_of(wave, window, (3, 4))
+    table = pd.concat(
+        [locate_singularities(fields[t]).assign(frame=t) for t in (3, 4)], ignore_index=True
+    ).assign(singularity=lambda rows: range(len(rows)))
     noise = 0.02 * rng.normal(size=(8, 30, 30, 2)).view(complex)[..., 0]
     noisy = [f.with_values(f.values + n) for f, n in zip(fields, noise, strict=True)]
     # the table tells the noise: covariance (E|n|^2 / 2) (J^T J)^-1 with E|n|^2 = 2 * 0.02^2

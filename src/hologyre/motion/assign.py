@@ -7,15 +7,16 @@ from collections.abc import Iterator
 from dataclasses import dataclass
 from typing import Literal, Self
 
+import numba
 import numpy as np
 import pandas as pd
 from numpy.typing import ArrayLike, NDArray
 
 from hologyre.grid import Window
 from hologyre.motion.endings import Ledger
-from hologyre.motion.matching import cheapest_matching
-from hologyre.motion.neighbours import near
-from hologyre.motion.steps import StepLaw
+from hologyre.motion.matching import cheapest_matching, match_edges
+from hologyre.motion.neighbours import near, near_pairs
+from hologyre.motion.steps import StepLaw, crossing_price, link_price, pair_price
 from hologyre.motion.tracks import Links, Motion, build, checked
 
 _PAIRS_SAMPLED = 16
@@ -39,8 +40,8 @@ def link_singularities(
         and charge. Not changed. Frame numbers may begin anywhere and have holes.
     max_step_px : float or "auto"
         Longest step between two frames, px; over a gap it grows with the frames spanned.
-        "auto" takes it from the table: the lesser of thirty median steps and the mean
-        spacing of zeros of one charge.
+        "auto" takes it from the table: half the mean spacing of zeros of one charge, or twenty
+        median steps if that is more, but no more than the spacing.
     max_gap : int
         Most frames a singularity may go undetected in before its track ends.
     frame_shape : (int, int), optional
@@ -151,7 +152,7 @@ def step_law(
         if settled:
             break
     if max_step_px == "auto":
-        reach = min(reach, max(30.0 * scale, 1.0))
+        reach = min(spacing, max(20.0 * scale, spacing / 2.0))
     return StepLaw(scale, density), reach
 
 
@@ -265,56 +266,84 @@ def match(
     last: int,
     now: int,
 ) -> tuple[NDArray[np.int64], NDArray[np.int64]]:
-    """Return the matched rows between the ends of tracks and the zeros of a new frame."""
-    frame, charge, hole = zeros.frame, zeros.charge, now - last
-    seen = frame[tips] == last
-    fresh, waiting = tips[seen], tips[~seen]
-    gives = [rows[charge[rows] < 0], fresh[charge[fresh] > 0], waiting[charge[waiting] > 0]]
-    takes = [rows[charge[rows] > 0], fresh[charge[fresh] < 0], waiting[charge[waiting] < 0]]
-    i, j, d = _near_by_age(zeros, gives, takes, reach, last, now)
-    left, right = np.concatenate(gives), np.concatenate(takes)
-    a, b = left[i], right[j]
-    link = (frame[a] == now) != (frame[b] == now)
-    # pairs die as seen in the last frame and are born as seen in this one
-    pair = (frame[a] == frame[b]) & (frame[a] >= last) & (charge[a] == -charge[b])
-    span = np.where(link, np.abs(frame[a] - frame[b]), hole)
-    kept = np.where(link, charge[a] == charge[b], pair) & (d <= reach * span)
-    i, j, d, a, b, link, span = (v[kept] for v in (i, j, d, a, b, link, span))
-    unseen = np.where(link, span - hole, 0) * zeros.vanishing[np.where(frame[a] < now, a, b)]
-    price = np.where(link, law.link(d, span) + unseen, law.pair(d, hole))
-    alone = [
-        # a zero that waits to be seen again has paid for its end already
-        np.where(
-            frame[side] < last,
-            0.0,
-            np.minimum(zeros.vanishing[side], law.crossing(zeros.to_border[side], hole)),
-        )
-        for side in (left, right)
-    ]
-    partner = cheapest_matching(i, j, price, left_alone=alone[0], right_alone=alone[1])
-    matched = np.flatnonzero(partner >= 0)
-    return left[matched], right[partner[matched]]
+    """Return the matched rows between the ends of tracks and the zeros of a new frame.
 
-
-def _near_by_age(
-    zeros: Zeros,
-    gives: list[NDArray[np.int64]],
-    takes: list[NDArray[np.int64]],
-    reach: float,
-    last: int,
-    now: int,
-) -> tuple[NDArray[np.int64], NDArray[np.int64], NDArray[np.float64]]:
-    """Return near pairs; the few zeros that wait may have gone farther and link only.
-
-    Both lists hold the new frame's zeros, those of the frame before and those that wait.
+    `tips` are the ends, seen in the frame `last` or waiting since before it; `rows` are the
+    zeros of the frame `now`.
     """
-    position = zeros.position
-    new, old = np.concatenate(gives[:2]), np.concatenate(takes[:2])
-    found = [near(position[new], position[old], reach * (now - last))]
-    for waiting, rows, offset in ((gives[2], takes[0], len(new)), (takes[2], gives[0], len(old))):
-        if len(waiting):
-            far = reach * (now - int(zeros.frame[waiting].min()))
-            i, j, d = near(position[waiting], position[rows], far)
-            found.append((i + offset, j, d) if waiting is gives[2] else (j, i + offset, d))
-    i, j, d = (np.concatenate(part) for part in zip(*found, strict=True))
-    return i, j, d
+    a, b = _match(
+        zeros.frame,
+        zeros.position,
+        zeros.charge,
+        zeros.to_border,
+        zeros.vanishing,
+        np.ascontiguousarray(tips),
+        np.ascontiguousarray(rows),
+        (law.scale_px, law.density_per_px2),
+        float(reach),
+        (last, now),
+    )
+    return a, b
+
+
+@numba.njit(cache=True, nogil=True)
+def _chosen(rows, wanted):  # type: ignore[no-untyped-def]
+    """Return the rows wanted; quicker than a mask for the few there are in a frame."""
+    chosen = np.empty(len(rows), np.int64)
+    n = 0
+    for k in range(len(rows)):
+        if wanted[k]:
+            chosen[n] = rows[k]
+            n += 1
+    return chosen[:n]
+
+
+@numba.njit(cache=True, nogil=True)
+def _match(  # type: ignore[no-untyped-def]
+    frame, position, charge, to_border, vanishing, tips, rows, law, reach, frames
+):
+    last, now = frames
+    scale, density = law
+    hole = now - last
+    seen = frame[tips] == last
+    up, rise = charge[tips] > 0, charge[rows] > 0
+    # charge flows from those that give it to those that take it; first what may die or be born
+    give_new, take_new = _chosen(rows, ~rise), _chosen(rows, rise)
+    give_wait, take_wait = _chosen(tips, up & ~seen), _chosen(tips, ~up & ~seen)
+    gives = np.concatenate((give_new, _chosen(tips, up & seen), give_wait))
+    takes = np.concatenate((take_new, _chosen(tips, ~up & seen), take_wait))
+    n_give, n_take = len(gives) - len(give_wait), len(takes) - len(take_wait)
+    i, j, d = near_pairs(position[gives[:n_give]], position[takes[:n_take]], reach * hole)
+    # the few zeros that wait may have gone farther, and link only
+    if len(give_wait) > 0:
+        far = reach * (now - frame[give_wait].min())
+        p, q, e = near_pairs(position[give_wait], position[take_new], far)
+        i, j, d = np.concatenate((i, p + n_give)), np.concatenate((j, q)), np.concatenate((d, e))
+    if len(take_wait) > 0:
+        far = reach * (now - frame[take_wait].min())
+        p, q, e = near_pairs(position[give_new], position[take_wait], far)
+        i, j, d = np.concatenate((i, p)), np.concatenate((j, q + n_take)), np.concatenate((d, e))
+    price = np.full(len(i), np.inf)
+    for k in range(len(i)):
+        a, b = gives[i[k]], takes[j[k]]
+        if frame[a] == frame[b]:
+            if charge[a] == -charge[b]:
+                price[k] = pair_price(d[k], float(hole), scale)
+        elif charge[a] == charge[b]:
+            span = abs(frame[a] - frame[b])
+            if d[k] <= reach * span:
+                old = a if frame[a] < now else b
+                unseen = (span - hole) * vanishing[old]
+                price[k] = link_price(d[k], float(span), scale, density) + unseen
+    give_alone, take_alone = np.empty(len(gives)), np.empty(len(takes))
+    for side, alone in ((gives, give_alone), (takes, take_alone)):
+        for k in range(len(side)):
+            row = side[k]
+            # a zero that waits to be seen again has paid for its end already
+            alone[k] = 0.0
+            if frame[row] >= last:
+                crossing = crossing_price(to_border[row], float(hole), scale)
+                alone[k] = min(vanishing[row], crossing)
+    partner = match_edges(i, j, price, give_alone, take_alone)
+    matched = np.flatnonzero(partner >= 0)
+    return gives[matched], takes[partner[matched]]

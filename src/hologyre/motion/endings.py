@@ -2,6 +2,8 @@
 
 from __future__ import annotations
 
+import math
+
 import numpy as np
 import pandas as pd
 from numpy.typing import NDArray
@@ -95,10 +97,11 @@ class Ledger:
 def _happening(
     kind: str, side: Side, rows: tuple[int, ...], position: NDArray[np.float64]
 ) -> Happening:
-    y, x = position[list(rows)].mean(axis=0)
+    y = sum(position[row, 0] for row in rows) / len(rows)
+    x = sum(position[row, 1] for row in rows) / len(rows)
     before, after = int(side.before[rows[0]]), int(side.after[rows[0]])
     known_y, known_x, at_frame = side.moment[rows[0]]
-    if np.isfinite(at_frame):
+    if not math.isnan(at_frame):
         y, x = known_y, known_x
     return Happening(kind, before, after, float(y), float(x), rows, float(at_frame))
 

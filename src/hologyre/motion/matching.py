@@ -50,23 +50,37 @@ def cheapest_matching(
     ... ).tolist()
     [1, 0]
     """
-    n_left, n_right = len(left_alone), len(right_alone)
-    # an edge dearer than leaving both ends alone is in no cheapest matching
-    useful = cost < left_alone[left] + right_alone[right]
-    left, right, cost = left[useful], right[useful], cost[useful]
-    order = np.lexsort((right, left))
-    start = np.zeros(n_left + 1, dtype=np.int64)
-    np.cumsum(np.bincount(left, minlength=n_left), out=start[1:])
-    price = np.asarray(cost, dtype=np.float64) - right_alone[right]
     return np.asarray(
-        _augment(
-            start,
-            right[order].astype(np.int64),
-            price[order],
-            np.ascontiguousarray(left_alone, dtype=np.float64),
-            n_right,
+        match_edges(
+            np.asarray(left, dtype=np.int64),
+            np.asarray(right, dtype=np.int64),
+            np.asarray(cost, dtype=np.float64),
+            np.asarray(left_alone, dtype=np.float64),
+            np.asarray(right_alone, dtype=np.float64),
         )
     )
+
+
+@numba.njit(cache=True, nogil=True)
+def match_edges(left, right, cost, left_alone, right_alone):  # type: ignore[no-untyped-def]
+    """Do the work of `cheapest_matching`, for callers in compiled code."""
+    start = np.zeros(len(left_alone) + 1, np.int64)
+    for k in range(len(left)):
+        # an edge dearer than leaving both ends alone is in no cheapest matching
+        if cost[k] < left_alone[left[k]] + right_alone[right[k]]:
+            start[left[k] + 1] += 1
+    for i in range(len(left_alone)):
+        start[i + 1] += start[i]
+    fill = start[:-1].copy()
+    column = np.empty(start[-1], np.int64)
+    price = np.empty(start[-1])
+    for k in range(len(left)):
+        i, j = left[k], right[k]
+        if cost[k] < left_alone[i] + right_alone[j]:
+            column[fill[i]] = j
+            price[fill[i]] = cost[k] - right_alone[j]
+            fill[i] += 1
+    return _augment(start, column, price, left_alone, len(right_alone))
 
 
 @numba.njit(cache=True, nogil=True)

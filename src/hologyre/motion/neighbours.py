@@ -2,6 +2,8 @@
 
 from __future__ import annotations
 
+import math
+
 import numba
 import numpy as np
 from numpy.typing import NDArray
@@ -25,16 +27,19 @@ def near(
         Sorted by i.
     distance : (pair,) array
     """
-    if len(a) == 0 or len(b) == 0:
-        nothing = np.empty(0, dtype=np.int64)
-        return nothing, nothing, np.empty(0)
-    i, j, d = _pairs(np.ascontiguousarray(a), np.ascontiguousarray(b), float(reach))
+    i, j, d = near_pairs(np.ascontiguousarray(a), np.ascontiguousarray(b), float(reach))
     return i, j, d
 
 
 @numba.njit(cache=True, nogil=True)
-def _pairs(a, b, reach):  # type: ignore[no-untyped-def]
-    """Sort b into square cells and look each point of a up in the nine around it."""
+def near_pairs(a, b, reach):  # type: ignore[no-untyped-def]
+    """Do the work of `near`, for callers in compiled code.
+
+    Points of b are sorted into square cells; each point of a is looked up in the nine around it.
+    """
+    if len(a) == 0 or len(b) == 0:
+        nothing = np.empty(0, np.int64)
+        return nothing, nothing, np.empty(0)
     low_y, low_x = b[:, 0].min(), b[:, 1].min()
     # cells no smaller than the reach, and not many more of them than points
     span = max(b[:, 0].max() - low_y, b[:, 1].max() - low_x)
@@ -50,24 +55,27 @@ def _pairs(a, b, reach):  # type: ignore[no-untyped-def]
         start[c + 1] += start[c]
     fill = start[:-1].copy()
     member = np.empty(len(b), np.int64)
+    by, bx = np.empty(len(b)), np.empty(len(b))
     for k in range(len(b)):
-        member[fill[cell[k]]] = k
+        m = fill[cell[k]]
+        member[m], by[m], bx[m] = k, b[k, 0], b[k, 1]
         fill[cell[k]] += 1
     room = 4 * len(a) + 16
     i, j, d = np.empty(room, np.int64), np.empty(room, np.int64), np.empty(room)
-    n = 0
+    n, most = 0, reach * reach
     for k in range(len(a)):
-        row = int(np.floor((a[k, 0] - low_y) / size))
-        column = int(np.floor((a[k, 1] - low_x) / size))
+        y, x = a[k, 0], a[k, 1]
+        row = math.floor((y - low_y) / size)
+        column = math.floor((x - low_x) / size)
         for r in range(max(row - 1, 0), min(row + 2, ny)):
             first, last = max(column - 1, 0), min(column + 1, nx - 1)
             if last < first:
                 continue
             # cells of a row lie together
             for m in range(start[r * nx + first], start[r * nx + last + 1]):
-                p = member[m]
-                distance = np.sqrt((a[k, 0] - b[p, 0]) ** 2 + (a[k, 1] - b[p, 1]) ** 2)
-                if distance > reach:
+                dy, dx = y - by[m], x - bx[m]
+                square = dy * dy + dx * dx
+                if square > most:
                     continue
                 if n == room:
                     more = np.empty(room, np.int64)
@@ -75,6 +83,6 @@ def _pairs(a, b, reach):  # type: ignore[no-untyped-def]
                     j = np.concatenate((j, more))
                     d = np.concatenate((d, np.empty(room)))
                     room *= 2
-                i[n], j[n], d[n] = k, p, distance
+                i[n], j[n], d[n] = k, member[m], math.sqrt(square)
                 n += 1
     return i[:n], j[:n], d[:n]

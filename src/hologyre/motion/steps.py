@@ -2,12 +2,35 @@
 
 from __future__ import annotations
 
+import math
 from dataclasses import dataclass
 
+import numba
 import numpy as np
 from numpy.typing import NDArray
 
 Array = NDArray[np.float64]
+
+
+@numba.vectorize(cache=True)
+def link_price(distance, frames, scale, density):  # type: ignore[no-untyped-def]
+    """Return minus the log of the step's density over that of zeros of its charge."""
+    w2 = (scale * frames) ** 2
+    return math.log(math.pi * density * w2 * (1.0 + distance * distance / w2) ** 2)
+
+
+@numba.vectorize(cache=True)
+def pair_price(separation, frames, scale):  # type: ignore[no-untyped-def]
+    """Return minus the log of a pair's chance to meet."""
+    share = separation / (2.0 * scale * frames)
+    return math.log(2.0 * (1.0 + share * share) ** 2)
+
+
+@numba.vectorize(cache=True)
+def crossing_price(to_border, frames, scale):  # type: ignore[no-untyped-def]
+    """Return minus the log of the chance of a step across the border."""
+    b = max(to_border, 0.0)
+    return -math.log(0.5 * (1.0 - b / math.hypot(b, scale * frames)))
 
 
 @dataclass(frozen=True)
@@ -44,23 +67,17 @@ class StepLaw:
 
     def link(self, distance_px: Array, frames: Array | float) -> Array:
         """Return the price of a step of this length over this many frames."""
-        w2 = np.square(self.scale_px * np.asarray(frames, dtype=np.float64))
-        price: Array = np.log(np.pi * self.density_per_px2 * w2) + 2.0 * np.log1p(
-            np.square(distance_px) / w2
-        )
+        price: Array = link_price(distance_px, frames, self.scale_px, self.density_per_px2)
         return price
 
     def pair(self, separation_px: Array, frames: Array | float) -> Array:
         """Return the price of a pair this far apart to meet, or to have just parted."""
-        w2 = np.square(2.0 * self.scale_px * np.asarray(frames, dtype=np.float64))
-        price: Array = np.log(2.0) + 2.0 * np.log1p(np.square(separation_px) / w2)
+        price: Array = pair_price(separation_px, frames, self.scale_px)
         return price
 
     def crossing(self, to_border_px: Array, frames: Array | float) -> Array:
         """Return the price of crossing a border this far away."""
-        w = self.scale_px * np.asarray(frames, dtype=np.float64)
-        b = np.maximum(to_border_px, 0.0)
-        price: Array = -np.log(0.5 * (1.0 - b / np.hypot(b, w)))
+        price: Array = crossing_price(to_border_px, frames, self.scale_px)
         return price
 
     def vanishing(self, robustness_snr: Array) -> Array:

@@ -4,6 +4,7 @@ from __future__ import annotations
 
 from dataclasses import dataclass, field
 
+import numba
 import numpy as np
 import pandas as pd
 from numpy.typing import NDArray
@@ -104,14 +105,17 @@ def build(table: pd.DataFrame, links: Links) -> Motion:
     return Motion(trajectories, _events(table, links.happenings, track))
 
 
-def _track_numbers(previous: NDArray[np.int64]) -> NDArray[np.int64]:
-    track = np.empty(len(previous), dtype=np.int64)
-    first = previous < 0
-    track[first] = np.arange(np.count_nonzero(first))
-    # rows are sorted by frame: the row before is always done already
-    later = np.flatnonzero(~first)
-    for row, before in zip(later.tolist(), previous[later].tolist(), strict=True):
-        track[row] = track[before]
+@numba.njit(cache=True, nogil=True)
+def _track_numbers(previous):  # type: ignore[no-untyped-def]
+    """Number tracks by their first row; the row before is done already, rows being by frame."""
+    track = np.empty(len(previous), np.int64)
+    count = 0
+    for row in range(len(previous)):
+        if previous[row] < 0:
+            track[row] = count
+            count += 1
+        else:
+            track[row] = track[previous[row]]
     return track
 
 
