@@ -14,6 +14,7 @@ from matplotlib.collections import LineCollection
 from matplotlib.figure import Figure
 from matplotlib.layout_engine import ConstrainedLayoutEngine
 from matplotlib.patches import Circle
+from matplotlib.ticker import MaxNLocator
 from numpy.typing import NDArray
 
 from hologyre.analyse import Analysis
@@ -166,12 +167,12 @@ def _phase(
         interpolation="nearest", extent=scale.extent(shape),
     )  # fmt: skip
     here = analysis.singularities[analysis.singularities["frame"] == frame]
-    size = float(np.clip(4000 / max(len(here), 1), 6, 60))
+    size = float(np.clip(6000 / max(len(here), 1), 16, 60))
     for charge, (marker, colour) in _MARKERS.items():
         chosen = here[np.sign(here["charge"]) == charge]
         axes.scatter(
             chosen["x_px"] * scale.factor, chosen["y_px"] * scale.factor, s=size, marker=marker,
-            facecolor=colour, edgecolor="black", linewidth=0.6,
+            facecolor=colour, edgecolor="black", linewidth=0.4,
         )  # fmt: skip
     _image_axes(axes, shape, scale)
     up, down = (int((np.sign(here["charge"]) == charge).sum()) for charge in (1, -1))
@@ -233,6 +234,15 @@ def _counts(figure: Figure, axes: Axes, analysis: Analysis) -> None:
     for side, kinds in ((1, ("pair_birth", "entry")), (-1, ("pair_death", "exit"))):
         _event_bars(below, events, middle, step, side, kinds)
     below.set_ylabel("events", fontsize=9)
+    if events.empty:
+        below.set_ylim(-1, 1)
+        below.text(0.5, 0.6, "no events", transform=below.transAxes, ha="center", color=_FAINT)
+    below.yaxis.set_major_locator(MaxNLocator(nbins=5, integer=True))
+    above.yaxis.set_major_locator(MaxNLocator(nbins=7, integer=True))
+    if len(frames) == 1:
+        below.set_xticks(at)
+    elif not timed:
+        below.xaxis.set_major_locator(MaxNLocator(integer=True))
     below.yaxis.set_major_formatter(lambda value, _: f"{abs(value):.0f}")
     below.set_xlabel("time (s)" if timed else "frame", fontsize=9)
     below.tick_params(colors=_INK, labelsize=8)
