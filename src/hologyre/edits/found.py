@@ -242,4 +242,9 @@ def _scales(
         scale = max(float(np.median(step)), 1e-3)
         if max_step_px == "auto":
             reach = min(reach, max(30.0 * scale, 1.0))
-    return StepLaw(scale, density), reach, spacing
+    law = StepLaw(scale, density)
+    # kernels are made ready here, so that the first edit need not wait for them
+    one = np.ones(())
+    for price in (law.link, law.pair, law.crossing):
+        price(one, 1.0)
+    return law, reach, spacing
