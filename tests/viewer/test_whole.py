@@ -8,14 +8,15 @@ from typing import Any
 
 import numpy as np
 import pytest
+import tifffile
 from napari.utils.notifications import notification_manager
 from qtpy.QtCore import QThreadPool
 from qtpy.QtWidgets import QFileDialog, QMenu
 
 from hologyre.analyse import analyse
 from hologyre.recipe import Recipe
-from hologyre.results import csv_bytes, run
-from hologyre.stacks import open_stack
+from hologyre.results import OutputError, csv_bytes, run
+from hologyre.stacks import as_stack, open_stack
 from hologyre.survey import survey
 from hologyre.tables import EVENTS, FRAMES, SINGULARITIES, TRAJECTORIES
 from hologyre.viewer import launch, steps
@@ -130,7 +131,8 @@ def test_cancelled_work_leaves_the_session_ready_for_the_next(
     qtbot.waitUntil(lambda: session.task.steps > 1, timeout=10_000)
     button.cancel_button.click()
     finish(session)
-    assert session.tables.found_with is None or len(session.tables.frames) < 6
+    assert session.tables.found_with is None
+    assert not steps.singularities_are_current(session)
     assert button.action_button.isEnabled()
     slow.set()
     button.action_button.click()
@@ -271,6 +273,29 @@ def test_a_result_is_loaded_with_its_stack(
     assert {role_of(x) for x in viewer.layers} == {"stack", "phase", "singularities", "tracks"}
     assert session.recipe == session.tables.linked_with
     assert len(session.display.layer("tracks").data) == len(session.tables.trajectories)
+
+
+def test_the_result_of_another_stack_is_refused(
+    stack_file: Path, holograms: Any, tmp_path: Path
+) -> None:
+    run(open_stack(stack_file), tmp_path / "result")
+    tifffile.imwrite(tmp_path / "less.tif", holograms[:2])
+    with pytest.raises(OutputError, match=r"6 x 128 x 128 px, and this one has 2 x 128 x 128 px"):
+        launch.view(tmp_path / "less.tif", result=tmp_path / "result")
+
+
+def test_frames_that_can_none_be_used_are_told_with_the_reason(
+    make_napari_viewer: Any, recipe: Recipe, finish: Any
+) -> None:
+    viewer = make_napari_viewer()
+    session = show_stack(viewer, as_stack(np.full((3, 128, 128), 9, np.uint8)), recipe=recipe)
+    before = len(notification_manager.records)
+    steps.find_singularities(session)
+    finish(session)
+    told = [record.message for record in notification_manager.records[before:]]
+    assert told == [
+        f"{session.name}: none of its 3 frames could be used (all pixels have the same value, 9)."
+    ]
 
 
 def test_a_sample_opens_at_its_start_in_its_own_micrometres_with_all_docks(

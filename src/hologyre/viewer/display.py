@@ -195,17 +195,17 @@ class Display:
             if layer is None or not layer.visible:
                 self._bound.pop(role, None)
                 continue
-            lines = drawing.cuts if role == "cuts" else drawing.arrows
-            data = lines(self._session, self._drawn, frame)
-            key = (id(layer), self._session.maps.key(role, self._drawn), frame, data is None)
+            maps = self._session.maps
+            found = maps.ready(role, self._drawn, frame)
+            key = (id(layer), maps.key(role, self._drawn), frame, found is None)
             if self._bound.get(role) == key:
                 continue
             self._bound[role] = key
             if role == "wavevectors":
-                layer.data = np.empty((0, 2, 2)) if data is None else data
+                layer.data = drawing.arrows(found)
                 continue
             # one assignment, since each redraws; new paths take the layer's current colour
-            paths = data or []
+            paths = drawing.cuts(found)
             layer.data = (paths, ["path"] * len(paths)) if paths else []
 
     def _follow_removal(self, event: Any) -> None:

@@ -7,6 +7,7 @@ from typing import Any
 import numpy as np
 from numpy.typing import NDArray
 
+from hologyre.phase.unwrap import Unwrapped
 from hologyre.recipe import Recipe
 from hologyre.viewer.frames import lazy_frames
 from hologyre.viewer.layers import (
@@ -62,19 +63,13 @@ def table(session: Session, role: Role) -> tuple[NDArray[np.float64], dict[str, 
     return data, {"features": features, **(looks if len(data) else {})}
 
 
-def cuts(session: Session, recipe: Recipe, frame: int) -> list[NDArray[np.float64]] | None:
-    """Return the cuts of a frame as paths, None if they are not computed yet."""
-    found = session.maps.ready("cuts", recipe, frame)
-    if found is None:
-        return None
-    return [] if isinstance(found, Skipped) else found.cuts.polylines
+def cuts(found: Unwrapped | Skipped | None) -> list[NDArray[np.float64]]:
+    """Return the cuts of a frame as paths; none if they are not computed yet."""
+    return found.cuts.polylines if isinstance(found, Unwrapped) else []
 
 
-def arrows(session: Session, recipe: Recipe, frame: int) -> NDArray[np.float64] | None:
-    """Return the wavevectors of a frame as arrows, None if they are not computed yet."""
-    found = session.maps.ready("wavevectors", recipe, frame)
-    if found is None:
-        return None
-    if isinstance(found, Skipped):
-        return np.empty((0, 2, 2))
-    return vectors_from_wavevector(found)
+def arrows(found: NDArray[np.floating] | Skipped | None) -> NDArray[np.float64]:
+    """Return the wavevectors of a frame as arrows; none if they are not computed yet."""
+    if isinstance(found, np.ndarray):
+        return vectors_from_wavevector(found)
+    return np.empty((0, 2, 2))

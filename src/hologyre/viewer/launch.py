@@ -11,7 +11,8 @@ from qtpy.QtCore import Qt
 from qtpy.QtWidgets import QDockWidget, QTabBar
 
 from hologyre.recipe import Recipe
-from hologyre.results import load_result
+from hologyre.results import OutputError, Result, load_result
+from hologyre.stacks import open_stack
 from hologyre.viewer.opening import show_stack
 from hologyre.viewer.session import Session, Tables
 
@@ -69,32 +70,39 @@ def view(
     StackError
         If the images cannot be used.
     OutputError
-        If the folder holds no result.
+        If the folder holds no result, or that of frames of another size or number.
     """
+    stack = open_stack(source)
     loaded = None if result is None else load_result(result)
+    if loaded is not None and tuple(loaded.run["input"]["shape"]) != stack.shape:
+        raise OutputError(
+            f"{result}: holds the result of a stack of {_size(loaded.run['input']['shape'])} px, "
+            f"and this one has {_size(stack.shape)} px; name the result of this stack."
+        )
     viewer = Viewer(title=PLUGIN)
-    session = show_stack(viewer, source, recipe=recipe if loaded is None else loaded.recipe)
+    session = show_stack(viewer, stack, recipe=recipe if loaded is None else loaded.recipe)
     open_docks(viewer)
     if loaded is not None:
-        show_tables(
-            session,
-            Tables(
-                singularities=loaded.singularities,
-                frames=loaded.frames,
-                trajectories=loaded.trajectories,
-                events=loaded.events,
-                found_with=loaded.recipe,
-                linked_with=loaded.recipe,
-            ),
-        )
+        _show_result(session, loaded)
     return viewer
 
 
-def show_tables(session: Session, tables: Tables) -> None:
-    """Give a session tables found earlier, and show them."""
-    session.tables = tables
+def _show_result(session: Session, loaded: Result) -> None:
+    whole = loaded.recipe if loaded.run["status"] == "done" else None
+    session.tables = Tables(
+        singularities=loaded.singularities,
+        frames=loaded.frames,
+        trajectories=loaded.trajectories,
+        events=loaded.events,
+        found_with=whole,
+        linked_with=whole,
+    )
     if session.display is not None:
         session.display.show("phase", "singularities", "tracks")
+
+
+def _size(shape: Sequence[int]) -> str:
+    return " x ".join(map(str, shape))
 
 
 def _fit_tabs(dock: QDockWidget) -> None:

@@ -5,6 +5,7 @@ from __future__ import annotations
 from collections.abc import Sequence
 from pathlib import Path
 
+import xarray as xr
 from napari import Viewer
 from napari.layers import Image
 
@@ -66,16 +67,19 @@ def use_layer(viewer: Viewer, layer: Image) -> Session:
 
 
 def show_stack(
-    viewer: Viewer, source: str | Path | Sequence[str | Path], *, recipe: Recipe | None = None
+    viewer: Viewer,
+    source: xr.DataArray | str | Path | Sequence[str | Path],
+    *,
+    recipe: Recipe | None = None,
 ) -> Session:
-    """Open holograms lazily and show them.
+    """Show holograms, opened lazily if they are given by their files.
 
     Raises
     ------
     StackError
         If the images cannot be used.
     """
-    stack = open_stack(source)
+    stack = source if isinstance(source, xr.DataArray) else open_stack(source)
     session = Session(stack, name=str(stack.attrs["name"]), recipe=recipe)
     data, options, _ = stack_layer(session)
     viewer.add_image(data, **options)

@@ -24,7 +24,10 @@ _ROLE = "hologyre_role"
 
 @dataclass(frozen=True, eq=False)
 class Tables:
-    """Tables found so far, and the recipes they were found with (None: not yet)."""
+    """Tables found so far, and the recipes they were found with.
+
+    No recipe stands for not yet, or not yet in all frames.
+    """
 
     singularities: pd.DataFrame = field(default_factory=lambda: empty(SINGULARITIES))
     frames: pd.DataFrame = field(default_factory=lambda: empty(FRAMES))
@@ -97,6 +100,11 @@ class Session:
     def task(self, task: Task | None) -> None:
         self._task = task
         self.task_changed.emit()
+
+    @property
+    def frame(self) -> int:
+        """The frame that is looked at; the first one where nothing is shown."""
+        return 0 if self.display is None else self.display.frame
 
     @property
     def optics(self) -> Optics:

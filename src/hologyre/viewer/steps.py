@@ -14,7 +14,7 @@ from hologyre.analyse.frame import FrameResult
 from hologyre.grid import Field
 from hologyre.motion import Motion
 from hologyre.recipe import Recipe
-from hologyre.survey import survey
+from hologyre.survey import SurveyError, survey
 from hologyre.tables import EVENTS, TRAJECTORIES, empty
 from hologyre.viewer.session import Session, Tables
 from hologyre.viewer.styles import Role
@@ -120,22 +120,28 @@ def _all_frames(session: Session, plan: Plan) -> Work[Tables]:
             session.maps.keep(plan.recipe, result)
             if time.monotonic() - shown > _REDRAW_S:
                 shown = time.monotonic()
-                yield _collected(plan, results)
+                yield _collected(results)
             else:
                 yield
     finally:
         close: Callable[[], None] | None = getattr(frames, "close", None)
         if close is not None:
             close()
-    return _collected(plan, results)
+    if all(result.status == "skipped" for result in results):
+        raise SurveyError(
+            f"{session.name}: none of its {len(results)} frames could be used "
+            f"({results[0].reason})."
+        )
+    return _collected(results, plan.recipe)
 
 
-def _collected(plan: Plan, results: list[FrameResult]) -> Tables:
+def _collected(results: list[FrameResult], found_with: Recipe | None = None) -> Tables:
+    """Put results together; without a recipe they count as unfinished."""
     none = Motion(empty(TRAJECTORIES), empty(EVENTS))
     return Tables(
         singularities=join_singularities(result.singularities for result in results),
         frames=frame_table((result.row for result in results), none),
-        found_with=plan.recipe,
+        found_with=found_with,
     )
 
 
@@ -199,6 +205,8 @@ def _start(
     def end() -> None:
         session.task = None
 
+    if session.task is not None:
+        raise RuntimeError(f"{session.name}: {session.task.title.lower()} already")
     task = Task(title, work, total=total, on_step=step, on_done=on_done, on_end=end)
     session.task = task
     task.start()

@@ -2,11 +2,13 @@
 
 from __future__ import annotations
 
+from functools import partial
 from html import escape
 from typing import Any
 
 import numpy as np
 from napari import Viewer
+from qtpy.QtCore import QTimer
 from qtpy.QtGui import QShowEvent
 from qtpy.QtWidgets import QLabel
 
@@ -20,6 +22,7 @@ from hologyre.viewer.maps import Skipped
 from hologyre.viewer.session import Session
 from hologyre.viewer.spectrum import Band, SpectrumView
 
+_REST_MS = 250
 _LABELS = {
     "carrier.fy": "Carrier fy (cycles/px)",
     "carrier.fx": "Carrier fx (cycles/px)",
@@ -67,6 +70,10 @@ class FieldDock(SessionDock):
         steps.show_pictures(session, "amplitude", "phase")
 
     def _lay_out(self) -> None:
+        self._rest = QTimer(self)
+        self._rest.setSingleShot(True)
+        self._rest.setInterval(_REST_MS)
+        self._rest.timeout.connect(self._ask_findings)
         self.find_button = button(
             "Find carrier",
             "Look for the carrier in frames spread through the stack, and put it below.",
@@ -99,35 +106,46 @@ class FieldDock(SessionDock):
 
     def _release(self) -> None:
         self.viewer.dims.events.current_step.disconnect(self._ask_spectrum)
+        self._rest.stop()
         self._ahead.stop()
         super()._release()
 
     def _ask_spectrum(self, event: Any = None) -> None:
-        """Have the current frame's spectrum computed, and its carrier if that is not decided."""
+        """Have the spectrum of the current frame computed, and shortly after what it allows."""
         session = self.session()
-        if session is None or session.display is None:
+        if session is None:
             self._spectrum.show_band(None)
             self._spectrum.show_picture(None, "The spectrum of the hologram comes here.")
             self.told.setText("")
             return
         if not self.isVisible():
             return
-        maps, recipe, frame = session.maps, session.recipe, session.display.frame
         self._show_spectrum()
-        wanted = ["spectrum", "carrier" if recipe.undecided() else "inspection"]
+        self._ask(session, "spectrum")
+        self._rest.start()
+
+    def _ask_findings(self) -> None:
+        """Have the frame looked at once the time slider rests; it takes longer than a step."""
+        session = self.session()
+        if session is not None and self.isVisible():
+            undecided = bool(session.recipe.undecided())
+            self._ask(session, "spectrum", "carrier" if undecided else "inspection")
+
+    def _ask(self, session: Session, *quantities: str) -> None:
+        maps, recipe, frame = session.maps, session.recipe, session.frame
         self._ahead.ask(
             [
-                lambda name=name: maps.prepare(name, recipe, frame)  # type: ignore[misc]
-                for name in wanted
+                partial(maps.prepare, name, recipe, frame)
+                for name in quantities
                 if maps.ready(name, recipe, frame) is None
             ]
         )
 
     def _show_spectrum(self) -> None:
         session = self.session()
-        if session is None or session.display is None:
+        if session is None:
             return
-        maps, recipe, frame = session.maps, session.recipe, session.display.frame
+        maps, recipe, frame = session.maps, session.recipe, session.frame
         picture = maps.ready("spectrum", recipe, frame)
         if picture is not None:
             self._spectrum.show_picture(picture)

@@ -85,12 +85,14 @@ def _finding(name: str, session: Session) -> str:
         shown = session.display is not None and session.display.layer("unwrapped") is not None
         return "unwrapped, frame by frame" if shown else "not unwrapped yet"
     if name == "Singularities":
-        if tables.found_with is None:
+        if not len(tables.frames):
             return "not searched yet"
         done = int((tables.frames["status"] == "done").sum())
         left = len(tables.frames) - done
         told = f"{len(tables.singularities)} in {done} frames"
         told += f", {left} frames not used" if left else ""
+        if tables.found_with is None:
+            return f"{told}, not all frames searched"
         return told + ("" if steps.singularities_are_current(session) else "; settings changed")
     if tables.linked_with is None:
         return "not followed yet"

@@ -63,10 +63,10 @@ class PhaseDock(SessionDock):
 
     def _tell(self, event: Any = None) -> None:
         session = self.session()
-        if session is None or session.display is None:
+        if session is None:
             self.told.setText("")
             return
-        frame = session.display.frame
+        frame = session.frame
         found = session.maps.ready("cuts", session.recipe, frame)
         if found is None:
             self.told.setText("")

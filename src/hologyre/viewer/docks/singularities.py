@@ -63,18 +63,20 @@ class SingularitiesDock(SessionDock):
 
     def _tell(self, event: Any = None) -> None:
         session = self.session()
-        if session is None or session.display is None:
+        if session is None:
             self.told.setText("")
             return
-        self.told.setText("\n".join(_sentences(session, session.display.frame)))
+        self.told.setText("\n".join(_sentences(session, session.frame)))
 
 
 def _sentences(session: Session, frame: int) -> list[str]:
     tables = session.tables
-    if tables.found_with is None:
+    if tables.found_with is None and not len(tables.frames):
         return ["Not searched yet."]
     told = []
-    if not steps.singularities_are_current(session):
+    if tables.found_with is None:
+        told.append("Not all frames are searched.")
+    elif not steps.singularities_are_current(session):
         told.append("Settings have changed since these were found; find them again.")
     row = tables.frames[tables.frames["frame"] == frame]
     if not len(row):

@@ -128,9 +128,9 @@ class StackDock(SessionDock):
 
     def _leave_out(self) -> None:
         session = self.session()
-        if session is None or session.display is None:
+        if session is None:
             return
-        frame = session.display.frame
+        frame = session.frame
         reason, ok = QInputDialog.getText(
             self, "Leave out a frame", f"Why is frame {frame} not used?"
         )
@@ -141,9 +141,9 @@ class StackDock(SessionDock):
 
     def _take_back(self) -> None:
         session = self.session()
-        if session is None or session.display is None:
+        if session is None:
             return
-        frame = session.display.frame
+        frame = session.frame
         kept = [x for x in session.recipe.stack.left_out if x.frame != frame]
         if len(kept) == len(session.recipe.stack.left_out):
             self.say(f"Frame {frame} is not left out; move the time slider to one that is.")
