@@ -18,10 +18,24 @@ ROOT = Path(__file__).resolve().parents[1]
 VENV = ROOT / ".venv-tests"
 BIN = VENV / ("Scripts" if os.name == "nt" else "bin")
 DEBIAN_PACKAGES = (
-    "xvfb xauth libgl1 libegl1 libgl1-mesa-dri libglib2.0-0 libfontconfig1 libxkbcommon-x11-0 "
-    "libxcb-cursor0 libxcb-icccm4 libxcb-keysyms1 libxcb-image0 libxcb-randr0 "
-    "libxcb-render-util0 libxcb-shape0 libxcb-xinerama0 libdbus-1-3"
-).split()
+    "xvfb",
+    "xauth",
+    "libgl1",
+    "libegl1",
+    "libgl1-mesa-dri",
+    "libglib2.0-0",
+    "libfontconfig1",
+    "libxkbcommon-x11-0",
+    "libxcb-cursor0",
+    "libxcb-icccm4",
+    "libxcb-keysyms1",
+    "libxcb-image0",
+    "libxcb-randr0",
+    "libxcb-render-util0",
+    "libxcb-shape0",
+    "libxcb-xinerama0",
+    "libdbus-1-3",
+)
 
 
 def run(*command: str | Path) -> None:
