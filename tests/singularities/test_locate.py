@@ -218,8 +218,9 @@ def test_a_tilt_moves_no_zero(periodic: Callable[..., Field]) -> None:
     pd.testing.assert_frame_equal(
         locate_singularities(tilted, noise=0.01)[columns],
         locate_singularities(plain, noise=0.01)[columns],
-        rtol=1e-6,
-        atol=1e-6,
+        # The Jacobian is taken one Newton step before the zero.
+        rtol=1e-3,
+        atol=1e-5,
     )
 
 
@@ -269,14 +270,14 @@ def test_uncertainty_is_that_of_noise_through_the_jacobian(periodic: Callable[..
         jacobian = np.array([[dx[row].real, dy[row].real], [dx[row].imag, dy[row].imag]])
         covariance = 0.02 * np.linalg.inv(jacobian.T @ jacobian)
         here = found.iloc[row]
-        assert here.sigma_x_px == pytest.approx(np.sqrt(covariance[0, 0]), rel=1e-5)
-        assert here.sigma_y_px == pytest.approx(np.sqrt(covariance[1, 1]), rel=1e-5)
-        assert here.cov_yx_px2 == pytest.approx(covariance[0, 1], rel=1e-4, abs=1e-9)
+        assert here.sigma_x_px == pytest.approx(np.sqrt(covariance[0, 0]), rel=1e-3)
+        assert here.sigma_y_px == pytest.approx(np.sqrt(covariance[1, 1]), rel=1e-3)
+        assert here.cov_yx_px2 == pytest.approx(covariance[0, 1], rel=1e-3, abs=1e-6)
         _, axes, right = np.linalg.svd(jacobian)
-        assert here.axis_ratio == pytest.approx(axes[1] / axes[0], rel=1e-5)
+        assert here.axis_ratio == pytest.approx(axes[1] / axes[0], rel=1e-3)
         # The amplitude grows slowest along the core's long axis.
         assert abs(np.cos(here.orientation_rad - np.arctan2(right[1, 1], right[1, 0]))) == (
-            pytest.approx(1, abs=1e-5)
+            pytest.approx(1, abs=1e-6)
         )
 
 

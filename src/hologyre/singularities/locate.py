@@ -8,6 +8,7 @@ from numpy.typing import NDArray
 
 from hologyre.fields.noise import NoiseMap
 from hologyre.grid import Field
+from hologyre.singularities.cells import doubtful
 from hologyre.singularities.lattice import lattice_of
 from hologyre.singularities.search import find_zeros
 from hologyre.singularities.winding import bends, lattice_turns
@@ -55,16 +56,20 @@ def locate_singularities(
     lattice = lattice_of(field, margin_px=margin_px)
     if lattice is None:
         return empty(SINGULARITIES)
-    bend = bends(lattice.samples)
-    along_x, along_y = lattice_turns(lattice.samples, lattice.table, bend)
-    places, slopes, charges, _, _ = find_zeros(
-        lattice.samples, lattice.table, bend, along_x, along_y, lattice.floor
+    planes, table = lattice.planes, lattice.table
+    bend = bends(planes)
+    turns_y, turns_x = lattice_turns(planes, table, bend)
+    doubt = doubtful(planes, bend)
+    zeros, _ = find_zeros(
+        planes, table, lattice.coarse, bend, turns_y, turns_x, doubt, lattice.floor
     )
-    y_px, x_px = lattice.to_px(places[:, 0], places[:, 1])
+    y_px, x_px = lattice.to_px(zeros[:, 0], zeros[:, 1])
     inside = np.flatnonzero(lattice.window.contains(y_px, x_px))
     inside = inside[np.lexsort((x_px[inside], y_px[inside]))]
-    y_px, x_px, charges = y_px[inside], x_px[inside], charges[inside]
-    dy, dx = slopes[inside, 0] / lattice.step_px[0], slopes[inside, 1] / lattice.step_px[1]
+    y_px, x_px, zeros = y_px[inside], x_px[inside], zeros[inside]
+    charges = zeros[:, 6].astype(np.int64)
+    dy = (zeros[:, 2] + 1j * zeros[:, 3]) / lattice.step_px[0]
+    dx = (zeros[:, 4] + 1j * zeros[:, 5]) / lattice.step_px[1]
     variance = _variance_at(noise, y_px, x_px)
     yy, xx, yx = np.abs(dy) ** 2, np.abs(dx) ** 2, (dx.conj() * dy).real
     det = dx.real * dy.imag - dy.real * dx.imag
@@ -73,7 +78,7 @@ def locate_singularities(
         spread = np.sqrt((xx - yy) ** 2 + 4 * yx**2)
         ratio = np.abs(det) * 2 / (xx + yy + spread)
     orientation = (np.arctan2(2 * yx, xx - yy) / 2 + np.pi / 2) % np.pi
-    table = pd.DataFrame(
+    found = pd.DataFrame(
         {
             "frame": np.zeros(charges.size, dtype=np.int64),
             "y_px": y_px,
@@ -88,7 +93,7 @@ def locate_singularities(
             "singularity": np.arange(charges.size),
         }
     )
-    return conform(table, SINGULARITIES)
+    return conform(found, SINGULARITIES)
 
 
 def _check_noise(noise: NoiseMap | float | None) -> None:

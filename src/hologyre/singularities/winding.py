@@ -10,10 +10,13 @@ from __future__ import annotations
 import numba
 import numpy as np
 
-from hologyre.singularities.kernel import HALO, value_at
+from hologyre.singularities.kernel import HALO, scratch, value_at
 
-_EDGE_DEPTH = 40
-_EDGE_PIECES = 200
+BEND_SLACK = 1.25
+"""How much an edge may bend beyond what its ends' second differences say."""
+
+_DEEPEST = 40
+_MOST_PIECES = 200
 
 
 @numba.njit(cache=True, nogil=True)
@@ -43,29 +46,30 @@ def chord_clear(a, b, bow):  # type: ignore[no-untyped-def]
 
 
 @numba.njit(cache=True, nogil=True)
-def edge_turns(samples, table, y, x, dy, dx, a, b, bend, work):  # type: ignore[no-untyped-def]
-    """Return the turns of the true field along the edge from (y, x) to (y + dy, x + dx).
+def edge_turns(planes, table, y, x, dy, dx, a, b, bend, work):  # type: ignore[no-untyped-def]
+    """Return the turns of the field along the edge from (y, x) to (y + dy, x + dx).
 
-    `bend` bounds the second difference over the edge. Halved until every piece's chord is
-    clear of zero; a zero on the edge itself falls to one side by the half-open rule.
+    `bend` bounds the second difference over the edge. It is halved until every piece's chord
+    is clear of zero; a zero on the edge itself falls to one side by the half-open rule.
     """
     if chord_clear(a, b, bend / 8.0):
         return chord_turns(a, b)
-    start = np.empty(_EDGE_DEPTH + 2)
-    size = np.empty(_EDGE_DEPTH + 2)
-    first = np.empty(_EDGE_DEPTH + 2, dtype=np.complex128)
-    last = np.empty(_EDGE_DEPTH + 2, dtype=np.complex128)
+    start = np.empty(_DEEPEST)
+    size = np.empty(_DEEPEST)
+    first = np.empty(_DEEPEST, dtype=np.complex128)
+    last = np.empty(_DEEPEST, dtype=np.complex128)
     start[0], size[0], first[0], last[0] = 0.0, 1.0, a, b
     top, turns, pieces = 1, 0, 0
     while top > 0:
         top -= 1
         t, s, p, q = start[top], size[top], first[top], last[top]
-        if s < 1e-11 or pieces > _EDGE_PIECES or chord_clear(p, q, bend * s * s / 8.0):
+        done = top >= _DEEPEST - 2 or pieces > _MOST_PIECES
+        if done or chord_clear(p, q, bend * s * s / 8.0):
             turns += chord_turns(p, q)
             continue
         pieces += 1
         half = t + s / 2.0
-        m = value_at(samples, table, y + half * dy, x + half * dx, work)
+        m = value_at(planes, table, y + half * dy, x + half * dx, work)
         start[top], size[top], first[top], last[top] = t, s / 2.0, p, m
         top += 1
         start[top], size[top], first[top], last[top] = half, s / 2.0, m, q
@@ -74,45 +78,77 @@ def edge_turns(samples, table, y, x, dy, dx, a, b, bend, work):  # type: ignore[
 
 
 @numba.njit(cache=True, nogil=True)
-def bends(samples):  # type: ignore[no-untyped-def]
-    """Return the size of the second differences along x plus along y at every node.
+def bends(planes):  # type: ignore[no-untyped-def]
+    """Return the field's second differences at the nodes.
 
-    Nodes one beyond the lattice on each side are included: (ny + 2, nx + 2).
+    Returns
+    -------
+    (4, ny, nx) array
+        Size of the one along y and of the one along x; real and imaginary part of their sum.
     """
-    ny, nx = samples.shape[0] - 2 * HALO + 2, samples.shape[1] - 2 * HALO + 2
-    out = np.empty((ny, nx, 2))
+    ny, nx = planes.shape[1] - 2 * HALO, planes.shape[2] - 2 * HALO
+    out = np.empty((4, ny, nx))
     for j in range(ny):
-        r = j + HALO - 1
+        above, here, below = planes[:, j + HALO - 1], planes[:, j + HALO], planes[:, j + HALO + 1]
         for i in range(nx):
-            c = i + HALO - 1
-            twice = 2.0 * samples[r, c]
-            v = samples[r, c - 1] - twice + samples[r, c + 1]
-            w = samples[r - 1, c] - twice + samples[r + 1, c]
-            out[j, i, 1] = np.sqrt(v.real * v.real + v.imag * v.imag)
-            out[j, i, 0] = np.sqrt(w.real * w.real + w.imag * w.imag)
+            c = i + HALO
+            re, im = 2.0 * here[0, c], 2.0 * here[1, c]
+            y_re, y_im = above[0, c] + below[0, c] - re, above[1, c] + below[1, c] - im
+            x_re = here[0, c - 1] + here[0, c + 1] - re
+            x_im = here[1, c - 1] + here[1, c + 1] - im
+            out[0, j, i] = np.sqrt(y_re * y_re + y_im * y_im)
+            out[1, j, i] = np.sqrt(x_re * x_re + x_im * x_im)
+            out[2, j, i] = y_re + x_re
+            out[3, j, i] = y_im + x_im
     return out
 
 
 @numba.njit(cache=True, nogil=True)
-def lattice_turns(samples, table, bend):  # type: ignore[no-untyped-def]
-    """Return the turns along all edges of the lattice: along x (ny, nx-1), along y (ny-1, nx)."""
-    ny, nx = samples.shape[0] - 2 * HALO, samples.shape[1] - 2 * HALO
-    along_x = np.empty((ny, nx - 1), dtype=np.int8)
+def lattice_turns(planes, table, bend):  # type: ignore[no-untyped-def]
+    """Return the turns along all edges: along y (ny-1, nx) and along x (ny, nx-1)."""
+    ny, nx = planes.shape[1] - 2 * HALO, planes.shape[2] - 2 * HALO
     along_y = np.empty((ny - 1, nx), dtype=np.int8)
-    work = np.empty((4, table.shape[1]))
+    along_x = np.empty((ny, nx - 1), dtype=np.int8)
+    # The edges whose chord may deceive are few: first find them, then look closer.
+    doubt = np.empty(nx, dtype=np.bool_)
+    work = scratch()
     for j in range(ny):
-        for i in range(nx):
-            a = samples[j + HALO, i + HALO]
-            if i < nx - 1:
-                b = samples[j + HALO, i + HALO + 1]
-                m = 1.25 * max(bend[j + 1, i + 1, 1], bend[j + 1, i + 2, 1])
-                along_x[j, i] = edge_turns(
-                    samples, table, float(j), float(i), 0.0, 1.0, a, b, m, work
-                )
-            if j < ny - 1:
-                b = samples[j + HALO + 1, i + HALO]
-                m = 1.25 * max(bend[j + 1, i + 1, 0], bend[j + 2, i + 1, 0])
-                along_y[j, i] = edge_turns(
-                    samples, table, float(j), float(i), 1.0, 0.0, a, b, m, work
-                )
-    return along_x, along_y
+        re, im = planes[0, j + HALO], planes[1, j + HALO]
+        for axis in range(2):
+            if axis == 0 and j == ny - 1:
+                continue
+            dy, dx = 1 - axis, axis
+            end_re = planes[0, j + HALO + dy]
+            end_im = planes[1, j + HALO + dy]
+            count = nx - dx
+            out = along_x[j] if axis == 1 else along_y[j]
+            here, there = bend[axis, j], bend[axis, j + dy]
+            for i in range(count):
+                a_re, a_im = re[i + HALO], im[i + HALO]
+                b_re, b_im = end_re[i + HALO + dx], end_im[i + HALO + dx]
+                d_re, d_im = b_re - a_re, b_im - a_im
+                bow = BEND_SLACK / 8.0 * max(here[i], there[i + dx])
+                length = d_re * d_re + d_im * d_im
+                cross = a_re * b_im - a_im * b_re
+                near = cross * cross <= bow * bow * length
+                # The foot of zero's perpendicular lies on the chord, or an end is close to zero.
+                between = a_re * d_re + a_im * d_im < 0.0 and b_re * d_re + b_im * d_im > 0.0
+                ends = min(a_re * a_re + a_im * a_im, b_re * b_re + b_im * b_im) <= bow * bow
+                doubt[i] = near and (between or ends)
+                up, over = a_im >= 0.0, b_im >= 0.0
+                out[i] = (up and not over and cross > 0.0) - (over and not up and cross < 0.0)
+            for i in range(count):
+                if doubt[i]:
+                    out[i] = edge_turns(
+                        planes,
+                        table,
+                        float(j),
+                        float(i),
+                        float(dy),
+                        float(dx),
+                        complex(re[i + HALO], im[i + HALO]),
+                        complex(end_re[i + HALO + dx], end_im[i + HALO + dx]),
+                        BEND_SLACK * max(here[i], there[i + dx]),
+                        work,
+                    )
+    return along_y, along_x
