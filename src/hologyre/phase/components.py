@@ -8,6 +8,7 @@ import numpy as np
 from numba import njit
 from numpy.typing import NDArray
 from scipy.ndimage import distance_transform_edt
+from scipy.ndimage import label as label_regions
 from scipy.sparse import coo_array
 from scipy.sparse.csgraph import breadth_first_order, minimum_spanning_tree
 
@@ -27,6 +28,33 @@ class Component(NamedTuple):
     turns: int
     gap_px: float
     agreement: float
+
+
+def gather_holes(
+    charge: NDArray[np.int8], mask: NDArray[np.bool_]
+) -> tuple[NDArray[np.int32], NDArray[np.bool_]]:
+    """Put the charge of each region left out on one plaquette; mark those at the border.
+
+    Plaquettes around one region (pixels that touch by side or corner) are joined by free
+    edges, so it does not matter where in it the charge sits.
+    """
+    regions, count = label_regions(~mask, structure=np.ones((3, 3)))
+    at_border = np.zeros(count + 1, np.bool_)
+    for side in (regions[0], regions[-1], regions[:, 0], regions[:, -1]):
+        at_border[side] = True
+    at_border[0] = False
+    region = np.maximum(
+        np.maximum(regions[:-1, :-1], regions[:-1, 1:]),
+        np.maximum(regions[1:, :-1], regions[1:, 1:]),
+    )
+    inside = region > 0
+    total = np.bincount(region[inside], charge[inside], minlength=count + 1).astype(np.int32)
+    numbers, first = np.unique(region, return_index=True)
+    left = charge.astype(np.int32)
+    left[inside] = 0
+    holes = (numbers > 0) & ~at_border[numbers]
+    left.ravel()[first[holes]] = total[numbers[holes]]
+    return left, at_border[region]
 
 
 @njit(cache=True, nogil=True)

@@ -7,6 +7,8 @@ from numba import njit
 from numpy.typing import NDArray
 
 TWO_PI = 2.0 * np.pi
+NEAR_PI_RAD = 0.9 * np.pi
+"""Wrapped differences beyond this are called near pi: noise may have flipped them."""
 
 
 def wrap(phase: NDArray[np.floating]) -> NDArray[np.floating]:
@@ -204,7 +206,7 @@ def edge_turns(phase: NDArray[np.floating]) -> tuple[NDArray[np.int8], NDArray[n
 
 
 @njit(cache=True, nogil=True)
-def plaquette_charges(turn_y: NDArray[np.int8], turn_x: NDArray[np.int8]) -> NDArray[np.int8]:
+def plaquette_charges(turn_y: NDArray[np.integer], turn_x: NDArray[np.integer]) -> NDArray[np.int8]:
     """Return the residues that belong to the turns of the edges."""
     ny, nx = turn_y.shape[0], turn_x.shape[1]
     charge = np.empty((ny, nx), np.int8)
@@ -212,3 +214,30 @@ def plaquette_charges(turn_y: NDArray[np.int8], turn_x: NDArray[np.int8]) -> NDA
         for i in range(nx):
             charge[j, i] = turn_y[j, i] + turn_x[j + 1, i] - turn_x[j, i] - turn_y[j, i + 1]
     return charge
+
+
+def near_pi_part(wrapped: NDArray[np.floating], mask: NDArray[np.bool_] | None) -> float:
+    """Return the fraction of edges between valid pixels that differ by more than 0.9 pi."""
+    if mask is None:
+        mask = np.broadcast_to(np.bool_(True), wrapped.shape)
+    near, edges = _count_near_pi(wrapped, mask)
+    return near / edges if edges else 0.0
+
+
+@njit(cache=True, nogil=True)
+def _count_near_pi(wrapped: NDArray[np.floating], mask: NDArray[np.bool_]) -> tuple[int, int]:
+    near, edges = 0, 0
+    ny, nx = wrapped.shape
+    for j in range(ny):
+        for i in range(nx):
+            if not mask[j, i]:
+                continue
+            if i + 1 < nx and mask[j, i + 1]:
+                step = abs(float(wrapped[j, i + 1]) - float(wrapped[j, i]))
+                near += min(step, TWO_PI - step) > NEAR_PI_RAD
+                edges += 1
+            if j + 1 < ny and mask[j + 1, i]:
+                step = abs(float(wrapped[j + 1, i]) - float(wrapped[j, i]))
+                near += min(step, TWO_PI - step) > NEAR_PI_RAD
+                edges += 1
+    return near, edges

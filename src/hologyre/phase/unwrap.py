@@ -5,29 +5,27 @@ from __future__ import annotations
 from dataclasses import dataclass
 
 import numpy as np
-from numba import njit
 from numpy.typing import NDArray
-from scipy.ndimage import label as label_regions
 
 from hologyre.phase.certificate import Certificate
 from hologyre.phase.components import (
     Component,
+    gather_holes,
     integrate,
     integrate_valid,
     tie_components,
 )
+from hologyre.phase.costs import checked_weight, edge_costs
 from hologyre.phase.cuts import Cuts, trace_cuts
-from hologyre.phase.edges import EdgesOrLines, PixelEdges, edges_along, edges_crossed, gathered
-from hologyre.phase.flow import FORBIDDEN, LARGEST_COST, cheapest_flow
+from hologyre.phase.edges import EdgesOrLines, edges_along, edges_crossed, gathered
+from hologyre.phase.flow import LARGEST_COST, cheapest_flow
 from hologyre.phase.residues import (
     TWO_PI,
     checked_phase,
     edge_turns,
+    near_pi_part,
     plaquette_charges,
 )
-
-NEAR_PI_RAD = 0.9 * np.pi
-"""Wrapped differences beyond this are called near pi: noise may have flipped them."""
 
 
 class ShutInError(ValueError):
@@ -155,7 +153,7 @@ def unwrap(
     """
     wrapped, mask = checked_phase(phase, valid)
     shape = (wrapped.shape[0], wrapped.shape[1])
-    weight = _checked_weight(weight, shape, mask)
+    weight = checked_weight(weight, shape, mask)
     if not 1 <= levels <= LARGEST_COST:
         raise ValueError(f"levels: expected 1 to {LARGEST_COST}, got {levels}")
     cost_y, cost_x = edge_costs(
@@ -166,39 +164,56 @@ def unwrap(
         gathered("bridges", bridges, shape, edges_along),
         levels if weight is not None else 1,
     )
-    return solve(wrapped, mask, weight, cost_y, cost_x, levels if weight is not None else 1)
+    turn_y, turn_x = edge_turns(wrapped)
+    return solve(
+        wrapped,
+        turn_y,
+        turn_x,
+        mask=mask,
+        weight=weight,
+        cost_y=cost_y,
+        cost_x=cost_x,
+        levels=levels if weight is not None else 1,
+        near_pi=near_pi_part(wrapped, mask),
+    )
 
 
 def solve(
-    wrapped: NDArray[np.floating],
+    start: NDArray[np.floating],
+    turn_y: NDArray[np.integer],
+    turn_x: NDArray[np.integer],
+    *,
     mask: NDArray[np.bool_] | None,
     weight: NDArray[np.floating] | None,
     cost_y: NDArray[np.int16],
     cost_x: NDArray[np.int16],
     levels: int,
+    near_pi: float,
 ) -> Unwrapped:
-    """Unwrap a checked phase with given costs of the edges."""
-    turn_y, turn_x = edge_turns(wrapped)
+    """Add turns to a checked phase so that its differences come near the wanted ones.
+
+    The wanted difference across an edge is that of `start` less 2 pi times its turns.
+    """
     charge = plaquette_charges(turn_y, turn_x)
     if mask is None:
         flow = cheapest_flow(charge, cost_y, cost_x)
     else:
-        charge_left, earth = _gather_holes(charge, mask)
-        flow = cheapest_flow(charge_left, cost_y, cost_x, earth)
+        gathered_charge, earth = gather_holes(charge, mask)
+        flow = cheapest_flow(gathered_charge, cost_y, cost_x, earth)
     if flow.stuck != (-1, -1):
         j, i = flow.stuck
         raise ShutInError(j + 0.5, i + 0.5, int(charge[j, i]))
     jump_y, jump_x = flow.jump_y, flow.jump_x
     if mask is None:
         turns = integrate(turn_y, turn_x, jump_y, jump_x)
-        labels = np.broadcast_to(np.int32(1), wrapped.shape)
-        components: tuple[Component, ...] = (Component(1, wrapped.size, 0, 0, 0.0, 1.0),)
+        labels = np.broadcast_to(np.int32(1), start.shape)
+        components: tuple[Component, ...] = (Component(1, start.size, 0, 0, 0.0, 1.0),)
     else:
         jump_y[~(mask[1:] & mask[:-1])] = 0
         jump_x[~(mask[:, 1:] & mask[:, :-1])] = 0
         turns, labels, sizes = integrate_valid(turn_y, turn_x, jump_y, jump_x, mask)
-        turns, components = tie_components(wrapped, turns, labels, sizes, weight)
-    unwrapped = (wrapped + TWO_PI * turns).astype(wrapped.dtype)
+        turns, components = tie_components(start, turns, labels, sizes, weight)
+    unwrapped = (start + TWO_PI * turns).astype(start.dtype)
     if mask is not None:
         unwrapped[~mask] = np.nan
     cuts = trace_cuts(jump_y, jump_x, cost_y, cost_x, levels, mask)
@@ -210,109 +225,6 @@ def solve(
         levels=levels,
         labels=labels,
         components=components,
-        near_pi=_near_pi(wrapped, mask),
+        near_pi=near_pi,
         certificate=Certificate(charge, cost_y, cost_x, flow.potential),
     )
-
-
-def edge_costs(
-    shape: tuple[int, int],
-    weight: NDArray[np.floating] | None,
-    mask: NDArray[np.bool_] | None,
-    barriers: PixelEdges | None,
-    bridges: PixelEdges | None,
-    levels: int,
-) -> tuple[NDArray[np.int16], NDArray[np.int16]]:
-    """Return the whole-numbered cost of cutting each edge, along y and along x."""
-    ny, nx = shape
-    if weight is None:
-        cost_y = np.full((ny - 1, nx), np.int16(levels))
-        cost_x = np.full((ny, nx - 1), np.int16(levels))
-    else:
-        # Only a weight of zero is free to cut.
-        level = np.maximum(np.rint(weight * levels), weight > 0).astype(np.int16)
-        cost_y = np.minimum(level[1:], level[:-1])
-        cost_x = np.minimum(level[:, 1:], level[:, :-1])
-    if barriers is not None:
-        cost_y[barriers.y] = 0
-        cost_x[barriers.x] = 0
-    if bridges is not None:
-        cost_y[bridges.y] = FORBIDDEN
-        cost_x[bridges.x] = FORBIDDEN
-    if mask is not None:
-        cost_y[~(mask[1:] & mask[:-1])] = 0
-        cost_x[~(mask[:, 1:] & mask[:, :-1])] = 0
-    return cost_y, cost_x
-
-
-def _checked_weight(
-    weight: NDArray[np.floating] | None,
-    shape: tuple[int, int],
-    mask: NDArray[np.bool_] | None,
-) -> NDArray[np.floating] | None:
-    if weight is None:
-        return None
-    weight = np.asarray(weight)
-    if weight.dtype.kind not in "fiub":
-        raise TypeError(f"weight: expected a real array, got dtype {weight.dtype}")
-    if weight.shape != shape:
-        raise ValueError(f"weight: expected the shape of phase, {shape}, got {weight.shape}")
-    if mask is not None:
-        weight = np.where(mask, weight, 0)
-    low, high = weight.min(), weight.max()
-    if not (low >= 0 and high <= 1):
-        raise ValueError(f"weight: expected values from 0 to 1, got {low} to {high}")
-    return weight
-
-
-def _gather_holes(
-    charge: NDArray[np.int8], mask: NDArray[np.bool_]
-) -> tuple[NDArray[np.int32], NDArray[np.bool_]]:
-    """Put the charge of each region left out on one plaquette; mark those at the border.
-
-    Plaquettes around one region (pixels that touch by side or corner) are joined by free
-    edges, so it does not matter where in it the charge sits.
-    """
-    regions, count = label_regions(~mask, structure=np.ones((3, 3)))
-    at_border = np.zeros(count + 1, np.bool_)
-    for side in (regions[0], regions[-1], regions[:, 0], regions[:, -1]):
-        at_border[side] = True
-    at_border[0] = False
-    region = np.maximum(
-        np.maximum(regions[:-1, :-1], regions[:-1, 1:]),
-        np.maximum(regions[1:, :-1], regions[1:, 1:]),
-    )
-    inside = region > 0
-    total = np.bincount(region[inside], charge[inside], minlength=count + 1).astype(np.int32)
-    numbers, first = np.unique(region, return_index=True)
-    left = charge.astype(np.int32)
-    left[inside] = 0
-    holes = (numbers > 0) & ~at_border[numbers]
-    left.ravel()[first[holes]] = total[numbers[holes]]
-    return left, at_border[region]
-
-
-def _near_pi(wrapped: NDArray[np.floating], mask: NDArray[np.bool_] | None) -> float:
-    if mask is None:
-        mask = np.broadcast_to(np.bool_(True), wrapped.shape)
-    near, edges = _count_near_pi(wrapped, mask)
-    return near / edges if edges else 0.0
-
-
-@njit(cache=True, nogil=True)
-def _count_near_pi(wrapped: NDArray[np.floating], mask: NDArray[np.bool_]) -> tuple[int, int]:
-    near, edges = 0, 0
-    ny, nx = wrapped.shape
-    for j in range(ny):
-        for i in range(nx):
-            if not mask[j, i]:
-                continue
-            if i + 1 < nx and mask[j, i + 1]:
-                step = abs(float(wrapped[j, i + 1]) - float(wrapped[j, i]))
-                near += min(step, TWO_PI - step) > NEAR_PI_RAD
-                edges += 1
-            if j + 1 < ny and mask[j + 1, i]:
-                step = abs(float(wrapped[j + 1, i]) - float(wrapped[j, i]))
-                near += min(step, TWO_PI - step) > NEAR_PI_RAD
-                edges += 1
-    return near, edges
