@@ -119,3 +119,14 @@ def test_a_whole_mask_changes_nothing(speckle):
     np.testing.assert_array_equal(
         unwrap(phase, valid=np.ones(phase.shape, bool)).phase, unwrap(phase).phase
     )
+
+
+def test_regions_shut_off_by_cuts_are_told_from_components():
+    phase = np.zeros((20, 20))
+    ring = np.array([(4.5, 4.5), (4.5, 12.5), (12.5, 12.5), (12.5, 4.5), (4.5, 4.5)])
+    shut = unwrap(phase, barriers=[ring])
+    assert len(shut.components) == 1
+    regions = shut.regions()
+    assert set(np.unique(regions)) == {1, 2}
+    assert (regions == 2).sum() == 8 * 8
+    assert (unwrap(phase).regions() == 1).all()

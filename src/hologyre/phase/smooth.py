@@ -11,15 +11,9 @@ from numpy.typing import NDArray
 from scipy.signal import fftconvolve
 
 from hologyre.phase.components import gather_holes
-from hologyre.phase.costs import checked_weight, edge_costs
 from hologyre.phase.cuts import Cuts
-from hologyre.phase.residues import (
-    checked_phase,
-    edge_turns,
-    near_pi_part,
-    plaquette_charges,
-)
-from hologyre.phase.unwrap import solve
+from hologyre.phase.residues import edge_turns, plaquette_charges
+from hologyre.phase.unwrap import pose, solve
 
 
 @dataclass(frozen=True, eq=False)
@@ -94,9 +88,9 @@ def split_vortices(
     >>> bool(np.allclose(np.diff(parts.smooth, axis=1), 0.3)), len(parts.cuts)
     (True, 0)
     """
-    wrapped, mask = checked_phase(phase, valid)
+    problem = pose(phase, weight, valid, None, None, 255)
+    wrapped, mask = problem.wrapped, problem.mask
     shape = (wrapped.shape[0], wrapped.shape[1])
-    checked = checked_weight(weight, shape, mask)
     turn_y, turn_x = edge_turns(wrapped)
     if vortices is None:
         charge = plaquette_charges(turn_y, turn_x).astype(np.int32)
@@ -116,19 +110,8 @@ def split_vortices(
     below = np.zeros(turn_y.shape, np.int32)
     below[:, :-1] = charge[:, ::-1].cumsum(axis=1)[:, ::-1]
     _add_outside(below, table, shape)
-    levels = 255 if checked is not None else 1
-    cost_y, cost_x = edge_costs(shape, checked, mask, None, None, levels)
-    result = solve(
-        wrapped.astype(np.float64) - singular,
-        turn_y - below,
-        turn_x.astype(np.int32),
-        mask=mask,
-        weight=checked,
-        cost_y=cost_y,
-        cost_x=cost_x,
-        levels=levels,
-        near_pi=near_pi_part(wrapped, mask),
-    )
+    start = wrapped.astype(np.float64) - singular
+    result = solve(start, turn_y - below, turn_x.astype(np.int32), problem)
     return SmoothAndSingular(result.phase.astype(np.float64), singular, table, result.cuts)
 
 

@@ -3,9 +3,12 @@
 from __future__ import annotations
 
 from dataclasses import dataclass
+from typing import NamedTuple
 
 import numpy as np
 from numpy.typing import NDArray
+from scipy.sparse import coo_array
+from scipy.sparse.csgraph import connected_components
 
 from hologyre.phase.certificate import Certificate
 from hologyre.phase.components import (
@@ -73,6 +76,9 @@ class Unwrapped:
         Where it is not small the phase is sampled too coarsely, even without residues.
     certificate : Certificate
         Potentials that prove the cost to be the least.
+    kept : float
+        In a sequence, the weighted fraction of pixels less than half a turn from their
+        value in the frame before; NaN otherwise.
     """
 
     phase: NDArray[np.floating]
@@ -84,11 +90,30 @@ class Unwrapped:
     components: tuple[Component, ...]
     near_pi: float
     certificate: Certificate
+    kept: float = float("nan")
 
     @property
     def cut_length_px(self) -> float:
         """Number of edges crossed by cuts, each counted once per turn."""
         return float(self.cuts.length_px.sum())
+
+    def regions(self) -> NDArray[np.int32]:
+        """Number the regions that no path free of cuts joins, from 1; 0 where left out.
+
+        More regions than components means that cuts and barriers shut some off: the phase
+        of one says nothing about that of another.
+        """
+        number = np.arange(self.labels.size).reshape(self.labels.shape)
+        valid = self.labels > 0
+        joined_y = (self.cuts.jump_y == 0) & (self.certificate.cost_y != 0)
+        joined_x = (self.cuts.jump_x == 0) & (self.certificate.cost_x != 0)
+        one = np.concatenate([number[:-1][joined_y], number[:, :-1][joined_x]])
+        two = np.concatenate([number[1:][joined_y], number[:, 1:][joined_x]])
+        graph = coo_array((np.ones(len(one), np.bool_), (one, two)), shape=(number.size,) * 2)
+        _, region = connected_components(graph, directed=False)
+        numbers = np.zeros(self.labels.shape, np.int32)
+        numbers[valid] = 1 + np.unique(region.reshape(valid.shape)[valid], return_inverse=True)[1]
+        return numbers
 
 
 def unwrap(
@@ -151,49 +176,59 @@ def unwrap(
     >>> bool(np.allclose(result.phase, ramp)), result.cost
     (True, 0.0)
     """
+    problem = pose(phase, weight, valid, barriers, bridges, levels)
+    turn_y, turn_x = edge_turns(problem.wrapped)
+    return solve(problem.wrapped, turn_y, turn_x, problem)
+
+
+class Problem(NamedTuple):
+    """A checked phase and the cost of cutting it; arrays as in `unwrap`."""
+
+    wrapped: NDArray[np.floating]
+    mask: NDArray[np.bool_] | None
+    weight: NDArray[np.floating] | None
+    cost_y: NDArray[np.int16]
+    cost_x: NDArray[np.int16]
+    levels: int
+
+
+def pose(
+    phase: NDArray[np.floating],
+    weight: NDArray[np.floating] | None,
+    valid: NDArray[np.bool_] | None,
+    barriers: EdgesOrLines | None,
+    bridges: EdgesOrLines | None,
+    levels: int,
+) -> Problem:
+    """Check what `unwrap` is given and turn it into costs; raises as `unwrap` does."""
     wrapped, mask = checked_phase(phase, valid)
     shape = (wrapped.shape[0], wrapped.shape[1])
     weight = checked_weight(weight, shape, mask)
     if not 1 <= levels <= LARGEST_COST:
         raise ValueError(f"levels: expected 1 to {LARGEST_COST}, got {levels}")
+    levels = levels if weight is not None else 1
     cost_y, cost_x = edge_costs(
         shape,
         weight,
         mask,
         gathered("barriers", barriers, shape, edges_crossed),
         gathered("bridges", bridges, shape, edges_along),
-        levels if weight is not None else 1,
+        levels,
     )
-    turn_y, turn_x = edge_turns(wrapped)
-    return solve(
-        wrapped,
-        turn_y,
-        turn_x,
-        mask=mask,
-        weight=weight,
-        cost_y=cost_y,
-        cost_x=cost_x,
-        levels=levels if weight is not None else 1,
-        near_pi=near_pi_part(wrapped, mask),
-    )
+    return Problem(wrapped, mask, weight, cost_y, cost_x, levels)
 
 
 def solve(
     start: NDArray[np.floating],
     turn_y: NDArray[np.integer],
     turn_x: NDArray[np.integer],
-    *,
-    mask: NDArray[np.bool_] | None,
-    weight: NDArray[np.floating] | None,
-    cost_y: NDArray[np.int16],
-    cost_x: NDArray[np.int16],
-    levels: int,
-    near_pi: float,
+    problem: Problem,
 ) -> Unwrapped:
-    """Add turns to a checked phase so that its differences come near the wanted ones.
+    """Add turns to `start` so that its differences come near the wanted ones.
 
     The wanted difference across an edge is that of `start` less 2 pi times its turns.
     """
+    mask, cost_y, cost_x = problem.mask, problem.cost_y, problem.cost_x
     charge = plaquette_charges(turn_y, turn_x)
     if mask is None:
         flow = cheapest_flow(charge, cost_y, cost_x)
@@ -212,19 +247,19 @@ def solve(
         jump_y[~(mask[1:] & mask[:-1])] = 0
         jump_x[~(mask[:, 1:] & mask[:, :-1])] = 0
         turns, labels, sizes = integrate_valid(turn_y, turn_x, jump_y, jump_x, mask)
-        turns, components = tie_components(start, turns, labels, sizes, weight)
+        turns, components = tie_components(start, turns, labels, sizes, problem.weight)
     unwrapped = (start + TWO_PI * turns).astype(start.dtype)
     if mask is not None:
         unwrapped[~mask] = np.nan
-    cuts = trace_cuts(jump_y, jump_x, cost_y, cost_x, levels, mask)
+    cuts = trace_cuts(jump_y, jump_x, cost_y, cost_x, problem.levels, mask)
     return Unwrapped(
         phase=unwrapped,
         turns=turns,
         cuts=cuts,
         cost=float(cuts.cost.sum()),
-        levels=levels,
+        levels=problem.levels,
         labels=labels,
         components=components,
-        near_pi=near_pi,
+        near_pi=near_pi_part(problem.wrapped, mask),
         certificate=Certificate(charge, cost_y, cost_x, flow.potential),
     )
