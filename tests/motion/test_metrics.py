@@ -70,6 +70,12 @@ def test_swapped_identities_cost_what_the_definitions_say():
     assert scores.links == pytest.approx(16 / 20, abs=1e-9)
 
 
+def test_a_link_that_bridges_an_undetected_position_is_neither_right_nor_wrong():
+    gap = TRUTH[(TRUTH["track"] != 0) | (TRUTH["frame"] != 4)]
+    # 18 true links, the two next to the gap missed
+    assert score_tracks(gap, TRUTH).links == pytest.approx(16 / 18, abs=1e-9)
+
+
 def test_positions_of_the_other_charge_do_not_match():
     assert score_tracks(TRUTH.assign(charge=-1), TRUTH).alpha == 0.0
 

@@ -20,7 +20,7 @@ class TrackScores:
     ----------
     links : float
         Right links over true links and wrong ones together; links of undetected zeros count
-        as missed.
+        as missed, one that bridges them rightly as neither right nor wrong.
     alpha, beta : float
         Closeness of the tracks without and with a penalty for spurious ones.
     jsc, jsc_theta : float
@@ -245,11 +245,19 @@ def _by_frame(x: _Tracks, y: _Tracks, pairs: _Pairs) -> NDArray[np.int64]:
 def _links(x: _Tracks, y: _Tracks, matched: NDArray[np.int64]) -> float:
     """Return right links over true and wrong ones."""
     (xa, xb), (ya, yb) = _links_of(x), _links_of(y)
-    made = set(zip(ya.tolist(), yb.tolist(), strict=True))
-    right = sum(
-        (a, b) in made for a, b in zip(matched[xa].tolist(), matched[xb].tolist(), strict=True)
-    )
-    every = len(xa) + len(made) - right
+    detected = matched >= 0
+    true = np.full(len(y.track), -1, dtype=np.int64)
+    true[matched[detected]] = np.flatnonzero(detected)
+    # the next detected row of each true track: what a link should lead to
+    order = np.lexsort((x.frame, x.track))
+    order = order[detected[order]]
+    following = np.full(len(x.track), -2, dtype=np.int64)
+    same = x.track[order][1:] == x.track[order][:-1]
+    following[order[:-1][same]] = order[1:][same]
+    along = (true[ya] >= 0) & (following[true[ya]] == true[yb])
+    made = set(zip(true[ya[along]].tolist(), true[yb[along]].tolist(), strict=True))
+    right = sum(pair in made for pair in zip(xa.tolist(), xb.tolist(), strict=True))
+    every = len(xa) + np.count_nonzero(~along)
     return right / every if every else 1.0
 
 

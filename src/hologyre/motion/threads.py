@@ -21,8 +21,10 @@ from hologyre.motion.tracks import Links, Motion, build, checked
 Method = Literal["auto", "threads", "assignment"]
 
 _NONE = np.empty(0, dtype=np.int64)
+# a slab in which so many lines have no second end does not conserve charge
 _MOST_LOST = 0.1
-_MOST_MISSED = 0.5
+# up to this error of the field between frames threads were right more often than assignment
+_MOST_MISSED = 0.6
 # how far noise may move a zero, in lengths over which the field changes
 _NEAR = 0.5
 
