@@ -21,7 +21,7 @@ from hologyre.singularities.statistics_blocks import (
     ratios,
     redraw,
 )
-from hologyre.singularities.theory_spectrum import FloatArray, Spectrum, distances
+from hologyre.singularities.theory_spectrum import FloatArray, Spectrum, nonnegative
 
 ComplexArray = NDArray[np.complexfloating]
 
@@ -120,7 +120,7 @@ def measure_wavevectors(
     """
     if about not in ("carrier", "mean"):
         raise ValueError(f"about: expected one of carrier, mean, got {about!r}")
-    limits = np.atleast_1d(distances(k_per_px, "k_per_px"))
+    limits = np.atleast_1d(nonnegative(k_per_px, "k_per_px"))
     if limits.ndim != 1:
         raise ValueError(f"k_per_px: expected one axis, got shape {limits.shape}")
     frames = list(_frames(field))
@@ -167,7 +167,7 @@ def measure_intensities(
     ValueError
         If an intensity is negative, `blocks` is unknown or the field is dark.
     """
-    limits = np.atleast_1d(distances(over_mean, "over_mean"))
+    limits = np.atleast_1d(nonnegative(over_mean, "over_mean"))
     if limits.ndim != 1:
         raise ValueError(f"over_mean: expected one axis, got shape {limits.shape}")
     bright = [np.abs(values) ** 2 for values in _valid_frames(field)]

@@ -15,7 +15,7 @@ import pandas as pd
 from numpy.typing import ArrayLike
 from scipy.special import roots_legendre
 
-from hologyre.singularities.theory_spectrum import FloatArray, Spectrum, distances
+from hologyre.singularities.theory_spectrum import FloatArray, Spectrum, nonnegative
 
 _SERIES_BELOW = 1.0
 """K R below which the terms that cancel are taken from their power series."""
@@ -55,7 +55,7 @@ def charge_correlation(spectrum: Spectrum, r_px: ArrayLike) -> FloatArray:
     -----
     ``4 / (<k^2>^2 R) d/dR [C'^2 / (1 - C^2)]``, Berry and Dennis (2000).
     """
-    terms = _terms(spectrum, distances(r_px) * spectrum.wavenumber_per_px)
+    terms = _terms(spectrum, nonnegative(r_px) * spectrum.wavenumber_per_px)
     return -2 * terms.h * terms.w / (terms.f0**2 * terms.a**2)
 
 
@@ -80,7 +80,7 @@ def pair_correlation(spectrum: Spectrum, r_px: ArrayLike) -> FloatArray:
     Berry and Dennis, Proc. R. Soc. Lond. A 456, 2059 (2000). At R = 0 it is
     ``(3 <k^4>/<k^2>^2 - 2) / 4``.
     """
-    z = distances(r_px) * spectrum.wavenumber_per_px
+    z = nonnegative(r_px) * spectrum.wavenumber_per_px
     a, b, p, q, d, w, h, f0 = _terms(spectrum, z)
     y = ((h * w) / (f0 * b)) ** 2
     big = p * q * d * a * z**2 / (f0 * b) ** 2
@@ -116,7 +116,7 @@ def unscreened_charge(spectrum: Spectrum, r_px: ArrayLike) -> FloatArray:
     -----
     Wilkinson, J. Phys. A 37, 6763 (2004). For a ring it falls only as 1/R.
     """
-    terms = _terms(spectrum, distances(r_px) * spectrum.wavenumber_per_px)
+    terms = _terms(spectrum, nonnegative(r_px) * spectrum.wavenumber_per_px)
     return terms.h**2 / (terms.f0 * terms.a)
 
 
@@ -142,7 +142,7 @@ def charge_variance(spectrum: Spectrum, radius_px: ArrayLike) -> FloatArray:
     (Berry and Dennis, 2000), integrated by parts:
     ``d Integral_0^2R sqrt(4 R^2 - r^2) S(r) dr`` with S the `unscreened_charge`.
     """
-    radius = distances(radius_px, "radius_px")
+    radius = nonnegative(radius_px, "radius_px")
     reach = float(radius.max(initial=0.0)) * spectrum.wavenumber_per_px
     nodes, weights = roots_legendre(64 + 2 * int(np.ceil(reach)))
     angle = (nodes + 1) * (np.pi / 4)
@@ -201,7 +201,7 @@ def bin_edges(edges_px: ArrayLike) -> FloatArray:
     ValueError
         If there are fewer than two, or they do not increase from 0 or more.
     """
-    edges = distances(edges_px, "edges_px")
+    edges = nonnegative(edges_px, "edges_px")
     if edges.ndim != 1 or edges.size < 2 or not (np.diff(edges) > 0).all():
         raise ValueError("edges_px: expected at least two increasing distances")
     return edges

@@ -8,7 +8,7 @@ import numpy as np
 from numpy.typing import ArrayLike
 
 from hologyre.singularities.theory import zero_density
-from hologyre.singularities.theory_spectrum import FloatArray, Spectrum, distances
+from hologyre.singularities.theory_spectrum import FloatArray, Spectrum, nonnegative
 
 
 def core_axis_ratio_pdf(axis_ratio: ArrayLike) -> FloatArray:
@@ -95,13 +95,13 @@ def speed_pdf(speed: ArrayLike, scale: float) -> FloatArray:
     ``2 v w^2 / (v^2 + w^2)^2``: mean ``pi w / 2``, no variance (after Berry and Dennis, Proc. R.
     Soc. Lond. A 456, 2059, 2000, for a time derivative independent of the gradient).
     """
-    v, w = distances(speed, "speed"), _median(scale)
+    v, w = nonnegative(speed, "speed"), _median(scale)
     return 2 * v * w**2 / (v**2 + w**2) ** 2
 
 
 def speed_exceedance(speed: ArrayLike, scale: float) -> FloatArray:
     """Return the share of zeros faster than `speed`: what a gate of that step loses."""
-    v, w = distances(speed, "speed"), _median(scale)
+    v, w = nonnegative(speed, "speed"), _median(scale)
     return w**2 / (v**2 + w**2)
 
 
@@ -137,7 +137,7 @@ def wavevector_exceedance(spectrum: Spectrum, k_per_px: ArrayLike) -> FloatArray
     2008); the median is sqrt(W).
     """
     half = spectrum.mean_square_k / 2
-    return half / (distances(k_per_px, "k_per_px") ** 2 + half)
+    return half / (nonnegative(k_per_px, "k_per_px") ** 2 + half)
 
 
 def superoscillating_fraction(spectrum: Spectrum) -> float:
@@ -160,7 +160,7 @@ def intensity_exceedance(over_mean: ArrayLike) -> FloatArray:
     -----
     Goodman, Speckle Phenomena in Optics (2007), fully developed polarised speckle.
     """
-    return np.exp(-distances(over_mean, "over_mean"))
+    return np.exp(-nonnegative(over_mean, "over_mean"))
 
 
 def speckle_contrast(*, background_ratio: float = 0.0, patterns: int = 1) -> float:
@@ -216,7 +216,7 @@ def false_zero_density(noise_spectrum: Spectrum, amplitude: ArrayLike, noise: fl
     """
     if not 0 < noise < np.inf:
         raise ValueError(f"noise: expected a positive number, got {noise!r}")
-    ratio = distances(amplitude, "amplitude") / noise
+    ratio = nonnegative(amplitude, "amplitude") / noise
     return zero_density(noise_spectrum) * np.exp(-(ratio**2))
 
 

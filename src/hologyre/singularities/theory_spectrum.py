@@ -161,21 +161,21 @@ class Spectrum:
         return np.array([float(np.sum(self.radial_power * squared**m)) for m in n])
 
     def _scale(self, r_px: ArrayLike) -> FloatArray:
-        return distances(r_px) * self.wavenumber_per_px
+        return nonnegative(r_px) * self.wavenumber_per_px
 
 
-def distances(r_px: ArrayLike, name: str = "r_px") -> FloatArray:
-    """Return distances as a float array.
+def nonnegative(values: ArrayLike, name: str = "r_px") -> FloatArray:
+    """Return values as a float array.
 
     Raises
     ------
     ValueError
         If one is negative or not finite.
     """
-    r = np.asarray(r_px, dtype=np.float64)
-    if not (np.isfinite(r) & (r >= 0)).all():
-        raise ValueError(f"{name}: expected finite distances of 0 or more")
-    return r
+    checked = np.asarray(values, dtype=np.float64)
+    if not (np.isfinite(checked) & (checked >= 0)).all():
+        raise ValueError(f"{name}: expected finite values of 0 or more")
+    return checked
 
 
 def _jinc(order: int, z: FloatArray) -> FloatArray:
