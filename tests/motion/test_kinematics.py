@@ -42,6 +42,17 @@ def test_brownian_steps_spread_as_four_d_tau_plus_the_localisation_error():
     assert msd["pairs"].tolist() == [2000 * (200 - k) for k in range(1, 11)]
 
 
+@pytest.mark.filterwarnings("ignore:The inplace keyword")
+def test_tracks_open_in_trackpy_after_one_rename():
+    import trackpy
+
+    rows = brownian(0.5, 0.3, 20, 30, seed=9)
+    renamed = rows.rename(columns={"track": "particle", "y_px": "y", "x_px": "x"})
+    theirs = trackpy.emsd(renamed, mpp=1.0, fps=1.0, max_lagtime=5)
+    ours = mean_squared_displacement(rows, max_lag=5)
+    np.testing.assert_allclose(theirs.to_numpy(), ours["msd_px2"], rtol=1e-9)
+
+
 def test_diffusion_and_localisation_error_are_told_apart():
     fit = fit_diffusion(brownian(0.5, 0.3, 400, 100, seed=2))
     assert abs(fit.d_px2_per_frame - 0.5) < 4 * fit.d_error

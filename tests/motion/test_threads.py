@@ -10,7 +10,8 @@ import pytest
 
 from hologyre.grid import Window
 from hologyre.motion import follow_threads
-from hologyre.simulate.waves import ThreeWaves, VortexBeam
+from hologyre.simulate.waves import RandomWaves, ThreeWaves, VortexBeam
+from hologyre.singularities.locate import locate_singularities
 
 
 def kinds(motion) -> dict[str, int]:
@@ -230,6 +231,30 @@ def test_fields_are_taken_one_after_another_and_let_go(slow_speckle):
     assert len(taken) == 24
 
 
+def test_a_singularity_moved_by_hand_keeps_its_track(slow_speckle):
+    tracks = slow_speckle.table.assign(track=slow_speckle.track)
+    longest = tracks.groupby("track").size().idxmax()
+    moved = (tracks["track"] == longest) & (tracks["frame"] == 4)
+    # farther than the field can tell: a length of it is 5 px
+    table = slow_speckle.table.assign(x_px=slow_speckle.table["x_px"] + 3.5 * moved)
+    motion = follow_threads(slow_speckle.fields(), table)
+    rows = motion.trajectories[motion.trajectories["singularity"].isin(tracks.index[moved])]
+    track = motion.trajectories[motion.trajectories["track"] == rows["track"].iloc[0]]
+    assert len(track) == (tracks["track"] == longest).sum()
+    assert rows["link"].tolist() == ["assigned"]
+
+
+def test_frames_too_far_apart_for_their_field_to_be_told_are_assigned(field_at):
+    wave = RandomWaves("disc", 12.0, 3.0, seed=2, box_px=144.0)
+    window = Window(0.0, 143.0, 0.0, 143.0)
+    fields = [field_at(wave, float(t), (144.0, 144.0), (30, 30), window) for t in range(6)]
+    tables = [locate_singularities(f).assign(frame=t) for t, f in enumerate(fields)]
+    table = pd.concat(tables, ignore_index=True).assign(singularity=lambda t: range(len(t)))
+    links = set(follow_threads(fields, table).trajectories["link"])
+    assert "thread" not in links
+    assert "thread" in set(follow_threads(fields, table, method="threads").trajectories["link"])
+
+
 def test_assignment_can_be_asked_for(slow_speckle):
     motion = follow_threads(slow_speckle.fields(), slow_speckle.table, method="assignment")
     assert set(motion.trajectories["link"]) == {"", "assigned"}
@@ -241,6 +266,7 @@ def test_assignment_can_be_asked_for(slow_speckle):
         ({"method": "guess"}, "method: expected one of auto, threads, assignment, got 'guess'"),
         ({"max_gap": -1}, "max_gap: expected"),
         ({"margin_px": -1.0}, "margin_px: expected"),
+        ({"frames": range(1, 9)}, "frames: the table has frame 0, of which there is no field"),
         ({"frames": [0, 1]}, "frames: fewer numbers than fields"),
         ({"frames": [0, 1, 1, 2, 3, 4, 5, 6]}, "frames: expected increasing numbers"),
     ],

@@ -4,7 +4,7 @@ from __future__ import annotations
 
 from collections.abc import Iterable
 from dataclasses import dataclass
-from typing import Literal, get_args
+from typing import Literal, Self, get_args
 
 import numpy as np
 import pandas as pd
@@ -20,7 +20,6 @@ from hologyre.motion.tracks import Links, Motion, build, checked
 
 Method = Literal["auto", "threads", "assignment"]
 
-_NONE = np.empty(0, dtype=np.int64)
 # a slab in which so many lines have no second end does not conserve charge
 _MOST_LOST = 0.1
 # up to this error of the field between frames threads were right more often than assignment
@@ -72,7 +71,7 @@ def follow_threads(
     ------
     ValueError
         If the table lacks a column, an option is out of its range, the fields differ in
-        size, or there are more or fewer than `frames`.
+        size, there are more of them than `frames`, or the table has a frame without a field.
 
     Notes
     -----
@@ -94,13 +93,18 @@ def follow_threads(
         raise ValueError(f"margin_px: expected 0 or more pixels, got {margin_px!r}")
     table = checked(table)
     weaver: _Weaver | None = None
+    searched: set[int] = set()
     for slab in slabs(fields, frames, noise=noise_told(table), margin_px=margin_px):
         if weaver is None:
             weaver = _Weaver(table, slab, method, max_step_px, max_gap)
         weaver.weave(slab)
+        searched |= {int(slab.before), int(slab.after)}
     if weaver is None:
         how = np.full(len(table), "", dtype=object)
         return build(table, Links(np.full(len(table), -1, dtype=np.int64), how))
+    strange = sorted(set(table["frame"]) - searched)
+    if strange:
+        raise ValueError(f"frames: the table has frame {strange[0]}, of which there is no field")
     return build(table, weaver.links())
 
 
@@ -115,6 +119,27 @@ class _Front:
     nodes: Nodes
     row: NDArray[np.int64]
     age: NDArray[np.int64]
+
+    @classmethod
+    def empty(cls) -> Self:
+        """Return a front without zeros."""
+        nothing = np.empty(0, dtype=np.int64)
+        return cls(Nodes(np.empty((0, 2)), nothing), nothing, nothing)
+
+    def only(self, chosen: NDArray[np.bool_]) -> _Front:
+        """Return the chosen zeros."""
+        nodes = Nodes(self.nodes.place[chosen], self.nodes.charge[chosen])
+        return _Front(nodes, self.row[chosen], self.age[chosen])
+
+    def and_those(self, other: _Front) -> _Front:
+        """Return both fronts' zeros."""
+        nodes = Nodes(
+            np.concatenate([self.nodes.place, other.nodes.place]),
+            np.concatenate([self.nodes.charge, other.nodes.charge]),
+        )
+        return _Front(
+            nodes, np.concatenate([self.row, other.row]), np.concatenate([self.age, other.age])
+        )
 
 
 class _Weaver:
@@ -153,23 +178,18 @@ class _Weaver:
         if ties is None:
             tips = np.concatenate([tips, near.row])
             rows = np.concatenate([rows, far.row])
-            unlisted = _Front(Nodes(np.empty((0, 2)), _NONE), _NONE, _NONE)
+            unlisted = _Front.empty()
         else:
             unlisted = self._tied(slab, near, far, ties)
-            lost = ties.mate[: len(near.row)] == NOWHERE
-            begun = ties.mate[len(near.row) :]
-            tips = np.concatenate([tips, near.row[lost]])
+            ended, begun = ties.mate[: len(near.row)], ties.mate[len(near.row) :]
+            # where a line goes on unlisted, a singularity moved by hand may stand for it
+            open_end = (ended == NOWHERE) | ((ended == UNLISTED) & (near.age == 0))
+            tips = np.concatenate([tips, near.row[open_end]])
             rows = np.concatenate([rows, far.row[(begun == NOWHERE) | (begun == UNLISTED)]])
         self._assign(tips, rows, last, now)
-        self._front = _Front(
-            Nodes(
-                np.concatenate([far.nodes.place, unlisted.nodes.place]),
-                np.concatenate([far.nodes.charge, unlisted.nodes.charge]),
-            ),
-            np.concatenate([far.row, unlisted.row]),
-            np.concatenate([far.age, unlisted.age]),
-        )
-        self._astray = astray
+        unlisted = unlisted.only(self._ledger.following[unlisted.row] < 0)
+        self._waiting = np.setdiff1d(self._waiting, unlisted.row)
+        self._front, self._astray = far.and_those(unlisted), astray
 
     def links(self) -> Links:
         """Return the links made and the events."""
@@ -189,8 +209,8 @@ class _Weaver:
         nodes, found = on_zeros(
             slab, u, self._zeros.position[rows], self._zeros.charge[rows], _NEAR
         )
-        kept = Nodes(nodes.place[found], nodes.charge[found])
-        return _Front(kept, rows[found], np.zeros(len(kept), dtype=np.int64)), rows[~found]
+        front = _Front(nodes, rows, np.zeros(len(rows), dtype=np.int64))
+        return front.only(found), rows[~found]
 
     def _ties(self, slab: Slab, near: _Front, far: _Front) -> Ties | None:
         """Follow the lines of a slab; None where assignment is to be trusted more."""
@@ -230,10 +250,8 @@ class _Weaver:
         hidden = np.flatnonzero(mate[:n] == UNLISTED)
         age = near.age[hidden] + now - last
         ledger.ends.between(near.row[hidden[near.age[hidden] == 0]], last, now)
-        hidden, age = hidden[age <= self._max_gap], age[age <= self._max_gap]
-        return _Front(
-            Nodes(ties.moment[hidden, :2], near.nodes.charge[hidden]), near.row[hidden], age
-        )
+        nodes = Nodes(ties.moment[hidden, :2], near.nodes.charge[hidden])
+        return _Front(nodes, near.row[hidden], age).only(age <= self._max_gap)
 
     def _assign(
         self, tips: NDArray[np.int64], rows: NDArray[np.int64], last: int, now: int
