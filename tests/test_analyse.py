@@ -329,6 +329,20 @@ def test_dark_frame_is_taken_out(holograms: NDArray[Any], recipe: Recipe, tmp_pa
     np.testing.assert_allclose(dirty.values, clean.values, atol=1e-3 * np.abs(clean.values).max())
 
 
+def test_visibility_does_not_count_the_dark_level(
+    holograms: NDArray[Any], recipe: Recipe, tmp_path: Path
+) -> None:
+    tifffile.imwrite(tmp_path / "dark.tif", np.full((128, 128), 40, dtype=np.uint8))
+    given = recipe.with_settings(
+        {"stack.saturation": "none", "stack.dark": str(tmp_path / "dark.tif")}
+    )
+    plain = analyse(
+        holograms[:1].astype(np.uint16), recipe.with_settings({"stack.saturation": "none"})
+    )
+    lifted = analyse(holograms[:1].astype(np.uint16) + 40, given)
+    assert lifted.frames["visibility"][0] == pytest.approx(plain.frames["visibility"][0], rel=1e-4)
+
+
 def test_blank_of_another_size_is_refused(
     holograms: NDArray[Any], recipe: Recipe, tmp_path: Path
 ) -> None:

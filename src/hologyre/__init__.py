@@ -19,7 +19,7 @@ if TYPE_CHECKING:
     from hologyre.fields.noise import NoiseMap, field_noise
     from hologyre.fields.wavevector import current, local_wavevector
     from hologyre.grid import Field, Grid, Window
-    from hologyre.motion import Motion, link_singularities
+    from hologyre.motion import Motion, audit, follow_threads, link_singularities
     from hologyre.optics import Optics
     from hologyre.phase.residues import residues
     from hologyre.phase.unwrap import Unwrapped, unwrap
@@ -50,11 +50,13 @@ _HOMES = {
     "Unwrapped": "hologyre.phase.unwrap",
     "Window": "hologyre.grid",
     "analyse": "hologyre.analyse",
+    "audit": "hologyre.motion",
     "current": "hologyre.fields.wavevector",
     "demodulate": "hologyre.fields.demodulate",
     "evaluate": "hologyre.fields.interpolate",
     "field_noise": "hologyre.fields.noise",
     "find_carrier": "hologyre.fields.carrier",
+    "follow_threads": "hologyre.motion",
     "iter_frames": "hologyre.analyse",
     "link_singularities": "hologyre.motion",
     "load_recipe": "hologyre.recipe",
@@ -89,11 +91,13 @@ __all__ = [
     "Unwrapped",
     "Window",
     "analyse",
+    "audit",
     "current",
     "demodulate",
     "evaluate",
     "field_noise",
     "find_carrier",
+    "follow_threads",
     "iter_frames",
     "link_singularities",
     "load_recipe",

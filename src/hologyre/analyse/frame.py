@@ -80,7 +80,7 @@ def measure(plan: Plan, frame: int) -> FrameResult:
     field = _field(plan, counts)
     noise = _noise(plan, counts)
     power = mean_power(field)
-    known["visibility"] = 2 * power**0.5 / float(np.nanmean(counts, dtype=np.float64))
+    known["visibility"] = 2 * power**0.5 / _mean_counts(plan, counts)
     if noise is not None:
         known["noise"] = noise.rms
         if power < _FAINT_POWER * noise.rms**2:
@@ -122,6 +122,13 @@ def _field(plan: Plan, counts: NDArray[Any]) -> Field:
         valid=finite_pixels(counts),
         saturation=_level(plan),
     )
+
+
+def _mean_counts(plan: Plan, counts: NDArray[Any]) -> float:
+    """Return the mean of the light in a frame, the camera's offset taken off where known."""
+    mean = float(np.nanmean(counts, dtype=np.float64))
+    dark = None if plan.blanks is None else plan.blanks.dark
+    return mean if dark is None else mean - float(np.mean(dark, dtype=np.float64))
 
 
 def _noise(plan: Plan, counts: NDArray[Any]) -> NoiseMap | None:
