@@ -361,15 +361,15 @@ def test_false_zeros_fall_exponentially_with_the_light_over_the_noise() -> None:
 
 def test_noise_in_simulated_coherent_light_makes_the_zeros_foretold() -> None:
     counts, expected = [], 0.0
-    for seed in range(8):
+    for seed in range(5):
         wave = RandomWaves("disc", 8.0, box_px=256.0, seed=seed)
         table = locate_singularities(np.sqrt(1.5) + wave.on_frame((256, 256), 0.0))
         counts.append(len(table))
         k = np.hypot(wave.modes.ky, wave.modes.kx)
         noise = Spectrum.measured(k, np.abs(wave.modes.amplitude) ** 2)
         expected += float(false_zero_density(noise, np.sqrt(1.5), 1.0)) * 255**2
-    # Some 2850 zeros, made in pairs: standard error sqrt(2 / n) = 2.7 %, three of it.
-    assert sum(counts) == pytest.approx(expected, rel=0.08)
+    # Some 1780 zeros, made in pairs: standard error sqrt(2 / n) = 3.4 %, three of it.
+    assert sum(counts) == pytest.approx(expected, rel=0.1)
 
 
 @pytest.mark.parametrize(

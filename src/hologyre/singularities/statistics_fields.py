@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Iterator
+from collections.abc import Iterable, Iterator
 from typing import Literal
 
 import numpy as np
@@ -11,7 +11,7 @@ import scipy.fft
 from numpy.typing import ArrayLike, NDArray
 
 from hologyre.fields.interpolate import on_pixels
-from hologyre.fields.wavevector import local_wavevector
+from hologyre.fields.wavevector import current, local_wavevector
 from hologyre.grid import Field, Grid, Window
 from hologyre.singularities.statistics_blocks import (
     BlockKind,
@@ -53,11 +53,10 @@ def measure_spectrum(field: Field | ComplexArray) -> Spectrum:
     <k^2> along an axis of N pixels; this is not taken out. Of a Field's frequencies those beyond
     its radius are left out.
     """
-    frames = list(_valid_frames(field))
-    ny, nx = frames[0].shape
+    ny, nx = next(_valid_frames(field)).shape
     taper = np.hanning(ny + 2)[1:-1, np.newaxis] * np.hanning(nx + 2)[1:-1]
     power = np.zeros((ny, nx))
-    for values in frames:
+    for values in _valid_frames(field):
         power += np.abs(scipy.fft.fft2(values * taper)) ** 2
     fy, fx = scipy.fft.fftfreq(ny)[:, np.newaxis], scipy.fft.fftfreq(nx)
     if isinstance(field, Field):
@@ -123,19 +122,15 @@ def measure_wavevectors(
     limits = np.atleast_1d(nonnegative(k_per_px, "k_per_px"))
     if limits.ndim != 1:
         raise ValueError(f"k_per_px: expected one axis, got shape {limits.shape}")
-    frames = list(_frames(field))
     corner = (slice(None), *_corner(field))
-    wavevectors = [local_wavevector(frame)[corner] for frame in frames]
     centre = np.zeros((2, 1, 1))
     if about == "mean":
-        power = [np.abs(values) ** 2 for values in _valid_frames(field)]
-        lit = sum(
-            float(p[np.isfinite(k[0])].sum()) for p, k in zip(power, wavevectors, strict=True)
-        )
-        pulls = [np.nansum(p * k, axis=(1, 2)) for p, k in zip(power, wavevectors, strict=True)]
-        centre = (np.sum(pulls, axis=0) / lit)[:, np.newaxis, np.newaxis]
-    lengths = [np.hypot(*(k - centre)) for k in wavevectors]
-    return _exceedance(lengths, limits, ("k_per_px", "exceedance"), blocks, rng)
+        lit = sum(float(np.sum(np.abs(values) ** 2)) for values in _valid_frames(field))
+        flows = (current(frame)[corner].sum(axis=(1, 2)) for frame in _frames(field))
+        centre = (np.sum(list(flows), axis=0) / lit)[:, np.newaxis, np.newaxis]
+    long = (np.hypot(*(local_wavevector(frame)[corner] - centre)) for frame in _frames(field))
+    part = _pixel_blocks(field, blocks)
+    return _exceedance(long, part, limits, ("k_per_px", "exceedance"), rng)
 
 
 def measure_intensities(
@@ -170,12 +165,12 @@ def measure_intensities(
     limits = np.atleast_1d(nonnegative(over_mean, "over_mean"))
     if limits.ndim != 1:
         raise ValueError(f"over_mean: expected one axis, got shape {limits.shape}")
-    bright = [np.abs(values) ** 2 for values in _valid_frames(field)]
-    mean = float(np.mean([each.mean() for each in bright]))
+    part = _pixel_blocks(field, blocks)
+    mean = sum(float(np.mean(np.abs(v) ** 2)) for v in _valid_frames(field)) / part.n_frames
     if not mean > 0:
         raise ValueError("field: expected some light, got zeros or values that are not finite")
-    relative = [each / mean for each in bright]
-    return _exceedance(relative, limits, ("over_mean", "exceedance"), blocks, rng)
+    relative = (np.abs(values) ** 2 / mean for values in _valid_frames(field))
+    return _exceedance(relative, part, limits, ("over_mean", "exceedance"), rng)
 
 
 def measure_contrast(
@@ -204,12 +199,12 @@ def measure_contrast(
     ValueError
         If `blocks` is unknown.
     """
-    bright = [np.abs(values) ** 2 for values in _valid_frames(field)]
-    part, index = _pixel_blocks(bright, blocks)
+    part = _pixel_blocks(field, blocks)
     sums = np.zeros((3, part.count))
-    for each, block in zip(bright, index, strict=True):
-        flat = each.ravel().astype(np.float64)
-        for k, weights in enumerate((np.ones_like(flat), flat, flat**2)):
+    for frame, values in enumerate(_valid_frames(field)):
+        bright = np.abs(values.ravel()).astype(np.float64) ** 2
+        block = _block_of_pixels(part, frame, values.shape)
+        for k, weights in enumerate((np.ones_like(bright), bright, bright**2)):
             sums[k] += part.sums(block, weights)
     times = np.vstack([np.ones(part.count), redraw(part.count, rng)])
     number, first, second = (times @ s for s in sums)
@@ -219,38 +214,39 @@ def measure_contrast(
 
 
 def _exceedance(
-    samples: list[FloatArray],
+    samples: Iterable[NDArray[np.floating]],
+    part: Blocks,
     limits: FloatArray,
     names: tuple[str, str],
-    blocks: BlockKind,
     rng: np.random.Generator | int,
 ) -> pd.DataFrame:
-    """Return the share of samples above each limit, those that are NaN left out."""
-    part, index = _pixel_blocks(samples, blocks)
+    """Return the share of each frame's samples above each limit, those that are NaN left out."""
     order = np.argsort(limits)
     classes = limits.size + 1
     counts = np.zeros(part.count * classes)
-    for each, block in zip(samples, index, strict=True):
-        flat = each.ravel()
-        known = np.isfinite(flat)
+    for frame, each in enumerate(samples):
+        known = np.isfinite(each).ravel()
+        block = _block_of_pixels(part, frame, each.shape)[known]
         # A sample in class n is above the n lowest limits.
-        place = np.searchsorted(limits[order], flat[known])
-        counts += np.bincount(block[known] * classes + place, minlength=counts.size)
+        place = np.searchsorted(limits[order], each.ravel()[known])
+        counts += np.bincount(block * classes + place, minlength=counts.size)
     table = counts.reshape(part.count, classes)
     above = table[:, ::-1].cumsum(axis=1)[:, ::-1][:, 1:]
     value, error = ratios(above[:, np.argsort(order)], table.sum(axis=1, keepdims=True), rng)
     return pd.DataFrame({names[0]: limits, names[1]: value, f"{names[1]}_error": error})
 
 
-def _pixel_blocks(
-    samples: list[FloatArray], kind: BlockKind
-) -> tuple[Blocks, Iterator[NDArray[np.int64]]]:
-    """Return the blocks of frames of pixels, and the block of each pixel frame by frame."""
-    ny, nx = samples[0].shape
-    part = Blocks(kind, Window(-0.5, ny - 0.5, -0.5, nx - 0.5), len(samples))
-    y, x = np.arange(ny, dtype=np.float64)[:, np.newaxis], np.arange(nx, dtype=np.float64)
-    index = (np.ravel(part.index(np.full((ny, nx), frame), y, x)) for frame in range(len(samples)))
-    return part, index
+def _pixel_blocks(field: Field | ComplexArray, kind: BlockKind) -> Blocks:
+    """Return the blocks of the field's valid pixels, whose first is taken as (0, 0)."""
+    first = next(_valid_frames(field))
+    n_frames = int(np.prod((field.values if isinstance(field, Field) else field).shape[:-2]))
+    ny, nx = first.shape
+    return Blocks(kind, Window(-0.5, ny - 0.5, -0.5, nx - 0.5), n_frames)
+
+
+def _block_of_pixels(part: Blocks, frame: int, shape: tuple[int, ...]) -> NDArray[np.int64]:
+    y, x = np.arange(float(shape[0]))[:, np.newaxis], np.arange(float(shape[1]))
+    return np.ravel(part.index(np.full(shape, frame), y, x))
 
 
 def _frames(field: Field | ComplexArray) -> Iterator[Field | ComplexArray]:

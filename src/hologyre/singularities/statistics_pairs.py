@@ -63,9 +63,10 @@ def measure_pairs(
     -----
     A pair counts with the inverse of the area in which its first end could lie with both in the
     window (translation correction; Ohser and Stoyan, Biometrical J. 23, 523, 1981). Errors: each
-    singularity's own pairs are drawn again with it (Loh, Astrophys. J. 681, 726, 2008). In
-    simulated frames they are right within a third up to the first peak, and up to three times
-    too large beyond it, where random waves are more orderly than what is drawn.
+    singularity's own pairs are drawn again with it (Loh, Astrophys. J. 681, 726, 2008), but
+    they are never less than those of as many independent pairs, nor of one. In simulated frames
+    of random waves they are right within a third up to the first peak, and up to three times
+    too large beyond it, where the waves are more orderly than what is drawn.
     """
     edges = bin_edges(edges_px)
     points = points_of(table, window, frames, blocks)
@@ -75,15 +76,16 @@ def measure_pairs(
         raise ValueError(f"edges_px: expected less than the window's side {side}, got {edges[-1]}")
     bins = edges.size - 1
     size = part.count * bins
-    sums = np.zeros((4, size))
+    sums = np.zeros((5, size))
     for rows in slices_of(points):
         if rows.stop - rows.start < 2:
             continue
         cell, weight, product = _pairs(points, rows, edges)
         signs = np.sign(product)
-        for k, each in enumerate((weight, weight * product, weight * signs, np.ones_like(weight))):
+        each_sum = (weight, weight * product, weight * signs, np.ones_like(weight), signs)
+        for k, each in enumerate(each_sum):
             sums[k] += np.bincount(cell, weights=each, minlength=size)
-    total, charged, signed, number = sums.reshape(4, part.count, bins)
+    total, charged, signed, number, balance = sums.reshape(5, part.count, bins)
     kinds = {
         "g": total,
         "g_charge": charged,
@@ -99,17 +101,23 @@ def measure_pairs(
     ring = np.pi * np.diff(edges**2) * (counts.sum() - 1)
     with np.errstate(divide="ignore", invalid="ignore"):
         scale = part.area_px2**2 / part.n_frames / drawn / ring
+    pairs, alike = number.sum(axis=0) / 2, (number + balance).sum(axis=0) / 4
+    # What one pair makes; like or opposite ones weigh double.
+    one = 2 / (part.height_px * part.width_px) * scale[0]
+    least = {
+        "g": one * np.sqrt(np.maximum(pairs, 1)),
+        "g_charge": one * np.sqrt(np.maximum(pairs, 1)),
+        "g_like": 2 * one * np.sqrt(np.maximum(alike, 1)),
+        "g_opposite": 2 * one * np.sqrt(np.maximum(pairs - alike, 1)),
+    }
     columns: dict[str, FloatArray] = {
         "r_low_px": edges[:-1],
         "r_high_px": edges[1:],
-        "pairs": (number.sum(axis=0) / 2).astype(np.int64),
+        "pairs": pairs.astype(np.int64),
     }
     for name, values in kinds.items():
         columns[name] = values.sum(axis=0) * scale[0]
-        # Where no pair is found the error is what a single one would have made.
-        one = 2 / (part.height_px * part.width_px) * scale[0]
-        one *= 2 if name in ("g_like", "g_opposite") else 1
-        columns[f"{name}_error"] = np.maximum(spread((times @ values) * scale[1:]), one)
+        columns[f"{name}_error"] = np.maximum(spread((times @ values) * scale[1:]), least[name])
     return pd.DataFrame(columns)
 
 
