@@ -311,6 +311,11 @@ def test_undecided_recipe_is_refused(holograms: NDArray[Any]) -> None:
         analyse(holograms, Recipe())
 
 
+def test_refocusing_is_refused_rather_than_ignored(holograms: NDArray[Any], recipe: Recipe) -> None:
+    with pytest.raises(RecipeError, match=r"refocus\.distance_um: 5\.0 um was asked for"):
+        analyse(holograms, recipe.with_settings({"refocus.distance_um": 5.0}))
+
+
 def test_iter_frames_wants_a_recipe_and_workers(holograms: NDArray[Any], recipe: Recipe) -> None:
     with pytest.raises(TypeError, match="recipe: expected a Recipe"):
         iter_frames(holograms)

@@ -4,7 +4,7 @@ from __future__ import annotations
 
 from collections.abc import Callable, Iterator, Sequence
 from dataclasses import dataclass
-from typing import overload
+from typing import Any, overload
 
 import dask.array as da
 import numpy as np
@@ -12,7 +12,7 @@ import pandas as pd
 import xarray as xr
 from numpy.typing import ArrayLike, NDArray
 
-from hologyre.analyse.frame import FrameResult, field_of
+from hologyre.analyse.frame import field_of
 from hologyre.analyse.iterate import iter_frames
 from hologyre.analyse.motion import frame_table, join_singularities, link
 from hologyre.analyse.planning import Plan, plan
@@ -151,13 +151,19 @@ def analyse(
     """
     stack = as_stack(stack)
     planned = plan(stack, survey(stack) if recipe is None else recipe)
-    results: list[FrameResult] = []
+    tables: list[pd.DataFrame] = []
+    rows: list[dict[str, Any]] = []
+    measured: list[int] = []
     for result in iter_frames(planned, workers=workers):
-        results.append(result)
+        # fields are let go: memory does not grow with the stack
+        tables.append(result.singularities)
+        rows.append(result.row)
+        if result.status == "done":
+            measured.append(result.frame)
         if progress is not None:
-            progress(len(results), len(planned.all_frames))
-    done = tuple(result.frame for result in results if result.status == "done")
-    singularities = join_singularities(result.singularities for result in results)
+            progress(len(rows), len(planned.all_frames))
+    done = tuple(measured)
+    singularities = join_singularities(tables)
     fields = LazyFields(done, planned)
     motion = link(planned, singularities, fields, done)
     return Analysis(
@@ -167,7 +173,7 @@ def analyse(
         singularities,
         motion.trajectories,
         motion.events,
-        frame_table((result.row for result in results), motion),
+        frame_table(rows, motion),
     )
 
 

@@ -55,6 +55,11 @@ def plan(stack: xr.DataArray | ArrayLike, recipe: Recipe) -> Plan:
         raise RecipeError(
             f'{", ".join(undecided)}: still "auto"; give values, or let hologyre.survey decide.'
         )
+    if recipe.refocus.distance_um:
+        raise RecipeError(
+            f"refocus.distance_um: {recipe.refocus.distance_um} um was asked for and this version "
+            "cannot refocus; set it to 0."
+        )
     frames, left_out = chosen_frames(stack, recipe)
     return Plan(
         stack,
