@@ -334,6 +334,26 @@ def test_dark_frame_is_taken_out(holograms: NDArray[Any], recipe: Recipe, tmp_pa
     np.testing.assert_allclose(dirty.values, clean.values, atol=1e-3 * np.abs(clean.values).max())
 
 
+@pytest.mark.parametrize("family", ["tilt", "polynomial"])
+def test_compensation_is_told_and_leaves_singularities_where_they_are(
+    holograms: NDArray[Any], recipe: Recipe, family: str
+) -> None:
+    plain = analyse(holograms[:1], recipe)
+    flat = analyse(holograms[:1], recipe.with_settings({"compensation.family": family}))
+    told = ["piston_rad", "tilt_y_rad_per_px", "tilt_x_rad_per_px"]
+    assert plain.frames[told].isna().all(axis=None)
+    assert flat.frames[told].notna().all(axis=None)
+    pd.testing.assert_frame_equal(flat.singularities, plain.singularities, check_exact=True)
+
+
+def test_tilt_taken_out_leaves_the_amplitude(holograms: NDArray[Any], recipe: Recipe) -> None:
+    flat = analyse(holograms[:1], recipe.with_settings({"compensation.family": "tilt"})).fields[0]
+    plain = analyse(holograms[:1], recipe).fields[0]
+    # single precision
+    np.testing.assert_allclose(np.abs(flat.values), np.abs(plain.values), rtol=1e-4, atol=1e-3)
+    assert flat.tilt_per_px != plain.tilt_per_px
+
+
 def test_visibility_does_not_count_the_dark_level(
     holograms: NDArray[Any], recipe: Recipe, tmp_path: Path
 ) -> None:

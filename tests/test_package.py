@@ -9,6 +9,7 @@ import pytest
 
 import hologyre
 from hologyre.fields.carrier import find_carrier
+from hologyre.fields.compensate import compensate
 from hologyre.fields.demodulate import demodulate
 from hologyre.motion import follow_threads, link_singularities
 from hologyre.optics import Optics
@@ -80,6 +81,8 @@ def test_functions_win_over_the_modules_of_their_name(name: str) -> None:
         ("field.window", demodulate, "window"),
         ("field.precision", demodulate, "precision"),
         ("stack.saturation", demodulate, "saturation"),
+        ("compensation.order", compensate, "order"),
+        ("compensation.method", compensate, "method"),
         ("phase.weight", unwrap, "weight"),
         ("singularities.margin_px", locate_singularities, "margin_px"),
         ("motion.method", follow_threads, "method"),

@@ -14,6 +14,7 @@ if TYPE_CHECKING:
     from hologyre.analyse import Analysis, FrameResult, analyse, iter_frames
     from hologyre.fields.blanks import Blanks
     from hologyre.fields.carrier import Carrier, NoFringes, find_carrier
+    from hologyre.fields.compensate import Compensated, compensate
     from hologyre.fields.demodulate import demodulate
     from hologyre.fields.interpolate import evaluate, on_pixels, resample
     from hologyre.fields.noise import NoiseMap, field_noise
@@ -35,6 +36,7 @@ _HOMES = {
     "Analysis": "hologyre.analyse",
     "Blanks": "hologyre.fields.blanks",
     "Carrier": "hologyre.fields.carrier",
+    "Compensated": "hologyre.fields.compensate",
     "Field": "hologyre.grid",
     "FrameResult": "hologyre.analyse",
     "Grid": "hologyre.grid",
@@ -51,6 +53,7 @@ _HOMES = {
     "Window": "hologyre.grid",
     "analyse": "hologyre.analyse",
     "audit": "hologyre.motion",
+    "compensate": "hologyre.fields.compensate",
     "current": "hologyre.fields.wavevector",
     "demodulate": "hologyre.fields.demodulate",
     "evaluate": "hologyre.fields.interpolate",
@@ -76,6 +79,7 @@ __all__ = [
     "Analysis",
     "Blanks",
     "Carrier",
+    "Compensated",
     "Field",
     "FrameResult",
     "Grid",
@@ -92,6 +96,7 @@ __all__ = [
     "Window",
     "analyse",
     "audit",
+    "compensate",
     "current",
     "demodulate",
     "evaluate",

@@ -177,6 +177,19 @@ class FieldSettings(_Section):
         return self
 
 
+class CompensationSettings(_Section):
+    """A smooth phase surface taken out of every frame; singularities stay where they are."""
+
+    family: Literal["none", "tilt", "polynomial", "zernike"] = Field(
+        default="none", description="terms of the surface: none, tilt, polynomial, zernike"
+    )
+    order: Annotated[int, Field(ge=1)] = Field(default=2, description="highest order of its terms")
+    method: Literal["gradient", "likelihood"] = Field(
+        default="gradient",
+        description="gradient: for smooth objects, quick; likelihood: for speckle, slow",
+    )
+
+
 class RefocusSettings(_Section):
     """Numerical refocusing."""
 
@@ -226,6 +239,7 @@ class Recipe(_Section):
     stack: StackSettings = StackSettings()
     carrier: CarrierSettings = CarrierSettings()
     field: FieldSettings = FieldSettings()
+    compensation: CompensationSettings = CompensationSettings()
     refocus: RefocusSettings = RefocusSettings()
     phase: PhaseSettings = PhaseSettings()
     singularities: SingularitySettings = SingularitySettings()

@@ -12,6 +12,7 @@ from numpy.typing import NDArray
 
 from hologyre.analyse.planning import Plan
 from hologyre.fields.carrier import NoFringes, find_carrier
+from hologyre.fields.compensate import compensate
 from hologyre.fields.demodulate import demodulate
 from hologyre.fields.interpolate import evaluate
 from hologyre.fields.noise import NoiseMap, field_noise
@@ -90,9 +91,11 @@ def measure(plan: Plan, frame: int) -> FrameResult:
         found = find_carrier(without_gaps(counts), radius=plan.carrier.radius)
         if isinstance(found, NoFringes):
             return _skipped(plan, frame, f"no fringes: {found.reason}", known)
+    # a phase that is taken out moves no zero: they are found in the field as it was read
     table = locate_singularities(field, noise=noise, margin_px=plan.recipe.singularities.margin_px)
     known["border_winding"] = border_winding(field, plan.recipe.singularities.margin_px)
-    return _done(plan, frame, field, table, known)
+    field, taken_out = _compensated(plan, field)
+    return _done(plan, frame, field, table, known | taken_out)
 
 
 def field_of(plan: Plan, frame: int) -> Field:
@@ -107,7 +110,7 @@ def field_of(plan: Plan, frame: int) -> Field:
     fault = frame_fault(counts, saturation_of(plan.recipe))
     if fault:
         raise ValueError(f"frame: {frame} cannot be used: {fault.reason}")
-    return _in_whole(plan, _field(plan, counts))
+    return _in_whole(plan, _compensated(plan, _field(plan, counts))[0])
 
 
 def _field(plan: Plan, counts: NDArray[Any]) -> Field:
@@ -122,6 +125,20 @@ def _field(plan: Plan, counts: NDArray[Any]) -> Field:
         valid=finite_pixels(counts),
         saturation=_level(plan),
     )
+
+
+def _compensated(plan: Plan, field: Field) -> tuple[Field, dict[str, float]]:
+    """Take out the surface the recipe asks for; tell what of it goes into the table."""
+    settings = plan.recipe.compensation
+    if settings.family == "none":
+        return field, {}
+    found = compensate(field, family=settings.family, order=settings.order, method=settings.method)
+    tilt_y, tilt_x = found.tilt_rad_per_px
+    return found.field, {
+        "piston_rad": found.piston_rad,
+        "tilt_y_rad_per_px": tilt_y,
+        "tilt_x_rad_per_px": tilt_x,
+    }
 
 
 def _mean_counts(plan: Plan, counts: NDArray[Any]) -> float:
