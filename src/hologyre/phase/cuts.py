@@ -102,106 +102,100 @@ def trace_cuts(
 ) -> Cuts:
     """Join the edges that are jumped across to cuts."""
     ny, nx = jump_x.shape[0], jump_y.shape[1]
-    place = np.zeros((ny + 1, nx + 1), np.int8)
-    place[[0, -1]] = place[:, [0, -1]] = ENDS.index("border")
+    tail, head, price = _units(jump_y, jump_x, cost_y, cost_x)
+    nodes, local = np.unique(np.concatenate((tail, head)), return_inverse=True)
+    tail, head = local[: len(tail)], local[len(tail) :]
+    order = np.argsort(tail, kind="stable")
+    leaving = np.bincount(tail, minlength=len(nodes))
+    excess = leaving - np.bincount(head, minlength=len(nodes))
+    out = np.concatenate(([0], np.cumsum(leaving)))
+    visited, first, cost, loops = _walk(out, head[order], price[order], excess)
+    y, x = np.divmod(nodes, nx + 1)
+    place = np.where((y % ny == 0) | (x % nx == 0), ENDS.index("border"), ENDS.index("residue"))
     if valid is not None:
-        touched = ~(valid[:-1, :-1] & valid[:-1, 1:] & valid[1:, :-1] & valid[1:, 1:])
-        place[1:ny, 1:nx][touched] = ENDS.index("mask")
-    vertices, first, start, end, cost = _trace(jump_y, jump_x, cost_y, cost_x, place)
-    return Cuts(jump_y, jump_x, vertices - 0.5, first, start, end, cost / levels)
+        touched = np.zeros((ny + 1, nx + 1), np.bool_)
+        touched[1:ny, 1:nx] = ~(valid[:-1, :-1] & valid[:-1, 1:] & valid[1:, :-1] & valid[1:, 1:])
+        place[touched[y, x]] = ENDS.index("mask")
+    start, end = (place[visited[at]].astype(np.int8) for at in (first[:-1], first[1:] - 1))
+    start[len(start) - loops :] = end[len(end) - loops :] = ENDS.index("loop")
+    vertices, first = _corners(np.column_stack((y, x))[visited] - 0.5, first)
+    return Cuts(jump_y, jump_x, vertices, first, start, end, cost / levels)
 
 
-# Flow to the right of node (J, I), which is plaquette (J - 1, I - 1), is -jump_y[J - 1, I];
-# flow down from it is jump_x[J, I - 1].
-@njit(cache=True, nogil=True)
-def _trace(
+def _units(
     jump_y: NDArray[np.int32],
     jump_x: NDArray[np.int32],
     cost_y: NDArray[np.int16],
     cost_x: NDArray[np.int16],
-    place: NDArray[np.int8],
-) -> tuple[
-    NDArray[np.float64],
-    NDArray[np.int64],
-    NDArray[np.int8],
-    NDArray[np.int8],
-    NDArray[np.float64],
-]:
-    height, width = place.shape
-    right = np.zeros((height, width), np.int32)
-    down = np.zeros((height, width), np.int32)
-    units = 0
-    for j in range(height - 2):
-        for i in range(width - 1):
-            if jump_y[j, i] != 0:
-                right[j + 1, i] = -jump_y[j, i]
-                units += abs(jump_y[j, i])
-    for j in range(height - 1):
-        for i in range(width - 2):
-            if jump_x[j, i] != 0:
-                down[j, i + 1] = jump_x[j, i]
-                units += abs(jump_x[j, i])
-    excess = np.zeros((height, width), np.int32)
-    for j in range(height):
-        for i in range(width):
-            if right[j, i] != 0:
-                excess[j, i] += right[j, i]
-                excess[j, i + 1] -= right[j, i]
-            if down[j, i] != 0:
-                excess[j, i] += down[j, i]
-                excess[j + 1, i] -= down[j, i]
-    vertices = np.empty((2 * units + 1, 2), np.float64)
-    first = np.zeros(units + 1, np.int64)
-    start = np.empty(units, np.int8)
-    end = np.empty(units, np.int8)
-    cost = np.zeros(units, np.float64)
-    cuts, top = 0, 0
+) -> tuple[NDArray[np.int64], NDArray[np.int64], NDArray[np.float64]]:
+    """List the nodes each unit of flow leaves and enters, and what it pays.
+
+    Node (J, I) is plaquette (J - 1, I - 1), in rows of one more than there are pixels. Flow to
+    the right of it is -jump_y[J - 1, I], flow down from it jump_x[J, I - 1].
+    """
+    width = jump_y.shape[1] + 1
+    # Positions of true values are found several times faster than those of numbers not 0.
+    jy, iy = np.divmod(np.flatnonzero(jump_y != 0), jump_y.shape[1])
+    jx, ix = np.divmod(np.flatnonzero(jump_x != 0), jump_x.shape[1])
+    low = np.concatenate(((jy + 1) * width + iy, jx * width + ix + 1))
+    high = low + np.repeat((1, width), (len(jy), len(jx)))
+    flow = np.concatenate((-jump_y[jy, iy], jump_x[jx, ix]))
+    price = np.concatenate((cost_y[jy, iy], cost_x[jx, ix])).astype(np.float64)
+    tail, head = np.where(flow > 0, (low, high), (high, low))
+    units = np.abs(flow)
+    return np.repeat(tail, units), np.repeat(head, units), np.repeat(price, units)
+
+
+@njit(cache=True, nogil=True)
+def _walk(
+    out: NDArray[np.int64],
+    head: NDArray[np.int64],
+    price: NDArray[np.float64],
+    excess: NDArray[np.int64],
+) -> tuple[NDArray[np.int64], NDArray[np.int64], NDArray[np.float64], int]:
+    """Take the flow apart: paths from sources to sinks, then what is left, in loops.
+
+    Arcs ``out[n]`` to ``out[n + 1] - 1`` leave node n. Returns the nodes of all paths, where
+    each path starts, what it costs, and how many of the last ones are loops.
+    """
+    following = out[:-1].copy()
+    visited = np.empty(2 * head.size, np.int64)
+    first = np.zeros(head.size + 1, np.int64)
+    cost = np.zeros(head.size, np.float64)
+    paths, top, open_paths = 0, 0, 0
     for closed in (False, True):
-        for j0 in range(height):
-            for i0 in range(width):
-                while excess[j0, i0] > 0 or (closed and (right[j0, i0] != 0 or down[j0, i0] != 0)):
-                    j, i, k, total = j0, i0, -1, 0.0
-                    if not closed:
-                        excess[j0, i0] -= 1
-                    while True:
-                        if k >= 0 and excess[j, i] < 0:
-                            excess[j, i] += 1
-                            break
-                        came = k
-                        if i < width - 1 and right[j, i] > 0:
-                            k = 0
-                            right[j, i] -= 1
-                        elif i > 0 and right[j, i - 1] < 0:
-                            k = 1
-                            right[j, i - 1] += 1
-                        elif j < height - 1 and down[j, i] > 0:
-                            k = 2
-                            down[j, i] -= 1
-                        elif j > 0 and down[j - 1, i] < 0:
-                            k = 3
-                            down[j - 1, i] += 1
-                        else:
-                            break  # a loop is closed
-                        if k != came:
-                            vertices[top, 0], vertices[top, 1] = j, i
-                            top += 1
-                        if k == 0:
-                            total += cost_y[j - 1, i]
-                            i += 1
-                        elif k == 1:
-                            i -= 1
-                            total += cost_y[j - 1, i]
-                        elif k == 2:
-                            total += cost_x[j, i - 1]
-                            j += 1
-                        else:
-                            j -= 1
-                            total += cost_x[j, i - 1]
-                    vertices[top, 0], vertices[top, 1] = j, i
+        for source in range(excess.size):
+            while excess[source] > 0 or (closed and following[source] < out[source + 1]):
+                if not closed:
+                    excess[source] -= 1
+                node = source
+                visited[top] = node
+                top += 1
+                while following[node] < out[node + 1]:
+                    arc = following[node]
+                    following[node] += 1
+                    cost[paths] += price[arc]
+                    node = head[arc]
+                    visited[top] = node
                     top += 1
-                    start[cuts] = 3 if closed else place[j0, i0]
-                    end[cuts] = 3 if closed else place[j, i]
-                    cost[cuts] = total
-                    cuts += 1
-                    first[cuts] = top
-    return vertices[:top].copy(), first[: cuts + 1].copy(), start[:cuts], end[:cuts], cost[:cuts]
+                    if excess[node] < 0:
+                        excess[node] += 1
+                        break
+                paths += 1
+                first[paths] = top
+        if not closed:
+            open_paths = paths
+    return visited[:top], first[: paths + 1], cost[:paths], paths - open_paths
+
+
+def _corners(
+    points: NDArray[np.float64], first: NDArray[np.int64]
+) -> tuple[NDArray[np.float64], NDArray[np.int64]]:
+    """Keep the ends and corners of paths."""
+    keep = np.ones(len(points), np.bool_)
+    if len(points) > 2:
+        step = np.diff(points, axis=0)
+        keep[1:-1] = (step[1:] != step[:-1]).any(axis=1)
+        keep[first[:-1]] = keep[first[1:] - 1] = True
+    before = np.concatenate(([0], np.cumsum(keep)))
+    return points[keep], before[first]

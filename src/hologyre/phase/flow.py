@@ -77,18 +77,20 @@ def cheapest_flow(
         earth = np.broadcast_to(np.bool_(False), charge.shape)
     nodes = np.empty((ny + 1, nx + 1, 4), np.int32)
     _lay_out(nodes, nodes.view(np.int16), charge, cost_y, cost_x, earth)
+    charged = _charged(charge, earth)
     excess = np.zeros(nodes.shape[:2], np.int32)
-    excess[1:ny, 1:nx] = charge
+    excess.ravel()[charged] = charge[charged // (nx + 1) - 1, charged % (nx + 1) - 1]
     jump_y = np.zeros((ny - 1, nx), np.int32)
     jump_x = np.zeros((ny, nx - 1), np.int32)
     largest = int(max(cost_y.max(initial=0), cost_x.max(initial=0), 1))
-    # A first reach that takes a search over a few edges, whatever the costs are.
-    reach = 1 + int(2.5 * max(cost_y.mean(), 0.0))
+    # A first reach of about a half of the way between two neighbours.
+    typical = max(float(cost_x[:: max(1, ny // 64)].mean()), 0.0)
+    reach = 1 + int(0.4 * typical * np.sqrt(charge.size / max(len(charged), 1)))
     stuck = _solve(
         nodes.reshape(-1, 4),
         nodes.reshape(-1, 4).view(np.int16),
         excess.ravel(),
-        _charged(nodes),
+        charged,
         nx + 1,
         largest,
         reach,
@@ -97,6 +99,15 @@ def cheapest_flow(
     )
     j, i = divmod(stuck, nx + 1) if stuck >= 0 else (0, 0)
     return Flow(jump_y, jump_x, nodes[1:ny, 1:nx, 0] >> 2, (j - 1, i - 1))
+
+
+def _charged(charge: NDArray[np.integer], earth: NDArray[np.bool_]) -> NDArray[np.int64]:
+    """List the charged nodes, tile by tile so that neighbours stay close in memory."""
+    j, i = np.divmod(np.flatnonzero(charge != 0), charge.shape[1])
+    free = ~earth[j, i]
+    j, i = j[free], i[free]
+    order = np.lexsort((i, j, i // _TILE, j // _TILE))
+    return ((j[order] + 1) * (charge.shape[1] + 2) + i[order] + 1).astype(np.int64)
 
 
 # One record of 16 bytes a node, so that a search touches few lines of memory:
@@ -135,26 +146,6 @@ def _lay_out(
             arcs[j, i, 5] = max(4 * cost_y[j - 1, i - 1], -1)
             arcs[j, i, 6] = max(4 * cost_x[j, i - 1], -1)
             arcs[j, i, 7] = max(4 * cost_x[j - 1, i - 1], -1)
-
-
-@njit(cache=True, nogil=True)
-def _charged(nodes: NDArray[np.int32]) -> NDArray[np.int64]:
-    """List the charged nodes, tile by tile so that neighbours stay close in memory."""
-    height, width = nodes.shape[:2]
-    charged = np.empty(height * width // 8 + 16, np.int64)
-    count = 0
-    for top in range(0, height, _TILE):
-        for left in range(0, width, _TILE):
-            for j in range(top, min(top + _TILE, height)):
-                for i in range(left, min(left + _TILE, width)):
-                    if nodes[j, i, 0] & 3 in (_POSITIVE, _NEGATIVE):
-                        if count == charged.size:
-                            more = np.empty(2 * count, np.int64)
-                            more[:count] = charged
-                            charged = more
-                        charged[count] = j * width + i
-                        count += 1
-    return charged[:count]
 
 
 @njit(cache=True, nogil=True)
@@ -206,7 +197,7 @@ def _solve(
                 charged[kept] = node
                 kept += 1
         left = kept
-        reach = min(reach + reach // 2 + 1, _FARTHEST)
+        reach = min(reach + reach // 3 + 1, _FARTHEST)
     return -1
 
 
