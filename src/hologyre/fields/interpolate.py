@@ -187,6 +187,22 @@ def coefficients(field: Field) -> NDArray[np.complexfloating]:
     return spectrum
 
 
+def from_coefficients(spectrum: NDArray[np.complexfloating], field: Field) -> Field:
+    """Return a field from centred coefficients, with another's grid origin, period and tilt.
+
+    Sampled as densely as that field, or more where the coefficients need it.
+    """
+    spectrum = _crop(spectrum, _held(spectrum))
+    shape = tuple(
+        s if s >= n else scipy.fft.next_fast_len(n)
+        for n, s in zip(spectrum.shape[-2:], field.shape, strict=True)
+    )
+    values = scipy.fft.ifft2(_place(spectrum, (shape[0], shape[1])), norm="forward")
+    period = field.period_px
+    grid = replace(field.grid, step_px=(period[0] / shape[0], period[1] / shape[1]))
+    return replace(field, values=_tilt(values, grid, field.tilt_per_px), grid=grid)
+
+
 def _held(spectrum: NDArray[np.complexfloating]) -> tuple[int, int]:
     """Return the number of bins on either side that are not all rounding error."""
     power = np.abs(spectrum).reshape(-1, *spectrum.shape[-2:]).max(axis=0)

@@ -48,7 +48,8 @@ def gather(
             place = row[p] if axis == 0 else column[p]
             for i in range(WIDTH):
                 u = (place - (first + i)) / _HALF
-                root = math.sqrt(max(1.0 - u * u, 1e-30))
+                # the kernel's slope has no bound at its very ends, where its value is 1e-14
+                root = math.sqrt(max(1.0 - u * u, 1e-4))
                 weights[axis, i] = math.exp(_BETA * (root - 1.0))
                 slopes[axis, i] = -weights[axis, i] * _BETA * u / (root * _HALF)
         for i in range(WIDTH):
