@@ -4,20 +4,26 @@ from __future__ import annotations
 
 from collections.abc import Hashable
 from functools import partial
-from typing import Any
+from typing import TYPE_CHECKING, Any
 
 import numpy as np
 from napari import Viewer
 from napari.layers import Layer
+from qtpy.QtCore import QTimer
 
 from hologyre.viewer import drawing
 from hologyre.viewer.ahead import Ahead
 from hologyre.viewer.layers import Placement, placement
 from hologyre.viewer.session import Session, metadata_for, role_of, session_of
-from hologyre.viewer.styles import RASTERS, STYLES, Role
+from hologyre.viewer.styles import PLANE, RASTERS, STYLES, Role, charge_colours
+
+if TYPE_CHECKING:
+    from hologyre.viewer.gestures import Gestures
 
 _AHEAD = 3
-_FRAME_BOUND: tuple[Role, ...] = ("cuts", "wavevectors")
+_SETTLE_MS = 700
+_FRAME_BOUND: tuple[Role, ...] = ("cuts", "residues", "wavevectors")
+_BY_CUTS: tuple[Role, ...] = ("unwrapped", "jumps")
 _TABLES: tuple[Role, ...] = ("tracks", "events", "singularities")
 
 
@@ -34,10 +40,17 @@ class Display:
         self._drawn = session.recipe
         self._bound: dict[Role, Hashable] = {}
         self._placed: Placement | None = None
+        self._solved: dict[Role, Hashable] = {}
+        self._settle = QTimer()
+        self._settle.setSingleShot(True)
+        self._settle.setInterval(_SETTLE_MS)
+        self._settle.timeout.connect(session.tables_changed.emit)
         self._ahead = Ahead(self._draw_frame)
+        self.gestures: Gestures | None = None
         session.display = self
         session.recipe_changed.connect(self._follow_recipe)
         session.tables_changed.connect(self._follow_tables)
+        session.editing.changed.connect(self._follow_edits)
         viewer.dims.events.current_step.connect(self._follow_slider)
         viewer.layers.events.removed.connect(self._follow_removal)
         self._place()
@@ -116,10 +129,15 @@ class Display:
                 **place.of(3),
             )
             self._put_above_pictures(layer)
-        elif role in _FRAME_BOUND:
-            add = self._viewer.add_shapes if role == "cuts" else self._viewer.add_vectors
-            layer = add(None, ndim=2, **common, **place.of(2))
-            layer.events.visible.connect(self._follow_slider)
+        elif role in PLANE:
+            adds = {
+                "shapes": self._viewer.add_shapes,
+                "vectors": self._viewer.add_vectors,
+                "points": self._viewer.add_points,
+            }
+            layer = adds[style.kind](None, ndim=2, **common, **place.of(2))
+            if role in _FRAME_BOUND:
+                layer.events.visible.connect(self._follow_slider)
         else:
             data, options = drawing.table(self._session, role)
             if role == "tracks" and not len(data):
@@ -190,6 +208,7 @@ class Display:
     def _draw_frame(self) -> None:
         """Draw what belongs to the current frame alone, as far as it is computed."""
         frame = self.frame
+        self._draw_solved(frame)
         for role in _FRAME_BOUND:
             layer = self.layer(role)
             if layer is None or not layer.visible:
@@ -197,20 +216,44 @@ class Display:
                 continue
             maps = self._session.maps
             found = maps.ready(role, self._drawn, frame)
-            key = (id(layer), maps.key(role, self._drawn), frame, found is None)
+            key = (id(layer), maps.entry(role, self._drawn, frame), found is None)
             if self._bound.get(role) == key:
                 continue
             self._bound[role] = key
             if role == "wavevectors":
                 layer.data = drawing.arrows(found)
                 continue
+            if role == "residues":
+                places, charge = drawing.residue_marks(found)
+                layer.data = places
+                if len(charge):
+                    layer.face_color = charge_colours(charge)
+                continue
             # one assignment, since each redraws; new paths take the layer's current colour
             paths = drawing.cuts(found)
             layer.data = (paths, ["path"] * len(paths)) if paths else []
+        self._session.drawn.emit()
+
+    def _draw_solved(self, frame: int) -> None:
+        """Show pictures that depend on lines drawn by hand anew once they are solved."""
+        lines = self._session.editing.drawn_lines
+        for role in _BY_CUTS:
+            layer = self.layer(role)
+            if layer is None or not layer.visible or self._solved.get(role, ()) == lines:
+                continue
+            if self._session.maps.ready(role, self._drawn, frame) is not None:
+                self._solved[role] = lines
+                layer.data = drawing.picture(self._session, self._drawn, role)
+
+    def _follow_edits(self, frames: Any) -> None:
+        self._follow_slider()
+        # tables of all frames are put together once the hand rests
+        self._settle.start()
 
     def _follow_removal(self, event: Any) -> None:
         if session_of(event.value) is self._session and not self._layers():
             self._ahead.stop()
+            self._settle.stop()
             if self._session.task is not None:
                 self._session.task.cancel()
 

@@ -24,13 +24,18 @@ from hologyre.viewer.styles import Role, charge_colours, charge_symbols, event_s
 def picture(session: Session, recipe: Recipe, role: Role) -> Any:
     """Return the lazy (t, y, x) array of a quantity."""
     maps = session.maps
-    quantity = {"amplitude": maps.amplitude, "phase": maps.phase, "unwrapped": maps.unwrapped}[role]
+    quantity = {
+        "amplitude": maps.amplitude,
+        "phase": maps.phase,
+        "unwrapped": maps.unwrapped,
+        "jumps": maps.jumps,
+    }[role]
     return lazy_frames(lambda t: quantity(recipe, t), maps.shape, np.float32)
 
 
 def contrast(session: Session, recipe: Recipe, role: Role, frame: int) -> dict[str, Any]:
     """Return the contrast limits a picture starts with, from one of its frames."""
-    if role == "phase":
+    if role in ("phase", "jumps"):
         return {}
     values = np.asarray(picture(session, recipe, role)[frame])
     values = values[np.isfinite(values)]
@@ -66,6 +71,11 @@ def table(session: Session, role: Role) -> tuple[NDArray[np.float64], dict[str, 
 def cuts(found: Unwrapped | Skipped | None) -> list[NDArray[np.float64]]:
     """Return the cuts of a frame as paths; none if they are not computed yet."""
     return found.cuts.polylines if isinstance(found, Unwrapped) else []
+
+
+def residue_marks(found: Any) -> tuple[NDArray[np.float64], NDArray[np.int8]]:
+    """Return places and charges of a frame's residues; none if they are not computed yet."""
+    return (np.empty((0, 2)), np.empty(0, np.int8)) if found is None else found
 
 
 def arrows(found: NDArray[np.floating] | Skipped | None) -> NDArray[np.float64]:

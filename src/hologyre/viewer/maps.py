@@ -24,10 +24,14 @@ from hologyre.fields.carrier import Carrier, find_carrier
 from hologyre.fields.interpolate import on_pixels
 from hologyre.fields.wavevector import local_wavevector
 from hologyre.grid import Field
-from hologyre.phase.unwrap import Unwrapped
+from hologyre.phase.unwrap import ShutInError, Unwrapped
 from hologyre.recipe import Recipe
+from hologyre.viewer.barriers import NO_LINES, Lines, residue_points, unwrap_along
 from hologyre.viewer.frames import FrameCache
 from hologyre.viewer.spectrum import spectrum_picture
+
+_KEPT_AS = {"cuts": "unwrapped", "jumps": "unwrapped", "wavevectors": "wavevector"}
+_BY_CUTS = ("unwrapped", "cuts", "jumps")
 
 
 @dataclass(frozen=True)
@@ -55,6 +59,7 @@ class FrameMaps:
     def __init__(self, stack: xr.DataArray) -> None:
         self._stack = stack
         self._cache = FrameCache()
+        self.lines: Callable[[int], Lines] = lambda _: NO_LINES
 
     @property
     def shape(self) -> tuple[int, int, int]:
@@ -67,7 +72,13 @@ class FrameMaps:
             return ()
         stack = recipe.stack.model_copy(update={"notes": "", "frames": ":", "left_out": ()})
         settings = (stack, recipe.carrier, recipe.field, recipe.refocus, recipe.optics)
-        return (*settings, recipe.phase) if quantity in ("unwrapped", "cuts") else settings
+        return (*settings, recipe.phase) if quantity in _BY_CUTS else settings
+
+    def entry(self, quantity: str, recipe: Recipe, frame: int) -> Hashable:
+        """Return what a quantity of one frame depends on, lines drawn by hand among it."""
+        name = _KEPT_AS.get(quantity, quantity)
+        lines = self.lines(frame) if name == "unwrapped" else NO_LINES
+        return (name, self.key(name, recipe), frame, lines)
 
     def hologram(self, frame: int) -> NDArray[Any]:
         """Return the counts of a frame."""
@@ -92,7 +103,7 @@ class FrameMaps:
     def keep(self, recipe: Recipe, result: FrameResult) -> None:
         """Keep the field of a frame that was analysed, so that it is not read again."""
         if result.field is not None:
-            self._cache.put(("field", self.key("field", recipe), result.frame), result.field)
+            self._cache.put(self.entry("field", recipe, result.frame), result.field)
 
     def field(self, recipe: Recipe, frame: int) -> Field | Skipped:
         """Return the complex field of a frame, on its band."""
@@ -121,6 +132,17 @@ class FrameMaps:
         """Return the unwrapped phase with its cuts."""
         return self._get("unwrapped", recipe, frame, self._unwrap)
 
+    def jumps(self, recipe: Recipe, frame: int) -> NDArray[np.float32]:
+        """Return for each pixel the most turns it jumps by towards a neighbour."""
+        found = self.unwrapping(recipe, frame)
+        if isinstance(found, Skipped):
+            return self._blank()
+        return found.cuts.jump_map().astype(np.float32)
+
+    def residues(self, recipe: Recipe, frame: int) -> tuple[NDArray[np.float64], NDArray[np.int8]]:
+        """Return places (n, 2) and charges of the residues of a frame's phase."""
+        return self._get("residues", recipe, frame, lambda r, t: residue_points(self.phase(r, t)))
+
     def wavevector(self, recipe: Recipe, frame: int) -> NDArray[np.float32] | Skipped:
         """Return the local wavevector (2, y, x), rad/px."""
         return self._get("wavevector", recipe, frame, self._wavevector)
@@ -135,14 +157,15 @@ class FrameMaps:
             "inspection": self.inspection,
             "unwrapped": self.unwrapping,
             "cuts": self.unwrapping,
+            "jumps": self.unwrapping,
+            "residues": self.residues,
             "wavevectors": self.wavevector,
         }
         makers[quantity](recipe, frame)
 
     def ready(self, quantity: str, recipe: Recipe, frame: int) -> Any | None:
         """Return a quantity if it is computed already, else None."""
-        name = {"cuts": "unwrapped", "wavevectors": "wavevector"}.get(quantity, quantity)
-        return self._cache.peek((name, self.key(name, recipe), frame))
+        return self._cache.peek(self.entry(quantity, recipe, frame))
 
     def _find_carrier(self, recipe: Recipe, frame: int) -> Carrier | Skipped:
         radius = recipe.carrier.radius
@@ -182,7 +205,15 @@ class FrameMaps:
 
     def _unwrap(self, recipe: Recipe, frame: int) -> Unwrapped | Skipped:
         field = self.field(recipe, frame)
-        return field if isinstance(field, Skipped) else unwrap_field(field, recipe.phase)
+        if isinstance(field, Skipped):
+            return field
+        lines = self.lines(frame)
+        if not lines:
+            return unwrap_field(field, recipe.phase)
+        try:
+            return unwrap_along(field, recipe.phase, lines)
+        except ShutInError as error:
+            return Skipped(str(error))
 
     def _wavevector(self, recipe: Recipe, frame: int) -> NDArray[np.float32] | Skipped:
         field = self.field(recipe, frame)
@@ -195,8 +226,7 @@ class FrameMaps:
     def _get(
         self, name: str, recipe: Recipe, frame: int, make: Callable[[Recipe, int], Any]
     ) -> Any:
-        key = (name, self.key(name, recipe), frame)
-        return self._cache.get(key, lambda: make(recipe, frame))
+        return self._cache.get(self.entry(name, recipe, frame), lambda: make(recipe, frame))
 
     def _blank(self) -> NDArray[np.float32]:
         return np.full(self.shape[1:], np.nan, np.float32)

@@ -13,6 +13,7 @@ from hologyre.optics import Optics
 from hologyre.recipe import Recipe
 from hologyre.tables import EVENTS, FRAMES, SINGULARITIES, TRAJECTORIES, empty
 from hologyre.viewer.maps import FrameMaps
+from hologyre.viewer.review_log import Editing
 
 if TYPE_CHECKING:
     from hologyre.viewer.display import Display
@@ -56,14 +57,20 @@ class Session:
     recipe_changed = Signal()
     tables_changed = Signal()
     task_changed = Signal()
+    drawn = Signal()
+    """What belongs to the current frame alone is drawn, as far as it is computed."""
+
+    told = Signal(str, bool)
+    """A sentence on what hands have done, and whether it is a warning."""
 
     def __init__(self, stack: xr.DataArray, *, name: str, recipe: Recipe | None = None) -> None:
         self.stack = stack
         self.name = name
         self.maps = FrameMaps(stack)
+        self.editing = Editing(stack, Tables())
+        self.maps.lines = self.editing.lines
         self.display: Display | None = None
         self._recipe = recipe or Recipe()
-        self._tables = Tables()
         self._task: Task | None = None
 
     def __deepcopy__(self, memo: dict[int, Any]) -> Session:
@@ -83,12 +90,15 @@ class Session:
 
     @property
     def tables(self) -> Tables:
-        """The tables found so far, a value."""
-        return self._tables
+        """The tables found so far, with edits by hand in them; a value.
+
+        What is set are tables as found, and the edits are done again on them.
+        """
+        return self.editing.tables
 
     @tables.setter
     def tables(self, tables: Tables) -> None:
-        self._tables = tables
+        self.editing.found = tables
         self.tables_changed.emit()
 
     @property

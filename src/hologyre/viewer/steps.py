@@ -86,7 +86,7 @@ def _measure(session: Session, title: str, *, linked: bool) -> None:
     display = session.display
     if display is None:
         return
-    known = session.tables if linked and singularities_are_current(session) else None
+    known = session.editing.found if linked and singularities_are_current(session) else None
 
     def work() -> Work[Tables]:
         yield

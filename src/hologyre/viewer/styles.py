@@ -11,7 +11,22 @@ from napari.utils import Colormap
 from numpy.typing import NDArray
 
 Role = Literal[
-    "amplitude", "phase", "unwrapped", "cuts", "wavevectors", "singularities", "tracks", "events"
+    "amplitude",
+    "phase",
+    "unwrapped",
+    "jumps",
+    "cuts",
+    "residues",
+    "wavevectors",
+    "singularities",
+    "tracks",
+    "events",
+    "barriers",
+    "bridges",
+    "analysed",
+    "left_out",
+    "steps",
+    "review",
 ]
 
 # Okabe and Ito's colours, told apart with every common colour vision deficiency
@@ -19,6 +34,9 @@ POSITIVE = "#E69F00"
 NEGATIVE = "#56B4E9"
 CUT = "#D55E00"
 ARROW = "#009E73"
+BARRIER = "#CC79A7"
+BRIDGE = "#F0E442"
+STEP = "#FFFFFF"
 _OUTLINE = "#000000"
 _CHARGE_MAP = Colormap([NEGATIVE, NEGATIVE, POSITIVE, POSITIVE], name="charge")
 
@@ -30,6 +48,12 @@ class Style:
     name: str
     kind: Literal["image", "shapes", "vectors", "points", "tracks"]
     options: dict[str, Any] = field(default_factory=dict)
+
+
+def _line(colour: str) -> dict[str, Any]:
+    return {
+        "edge_color": colour, "face_color": "transparent", "edge_width": 1.5, "opacity": 1.0,
+    }  # fmt: skip
 
 
 STYLES: dict[Role, Style] = {
@@ -45,10 +69,20 @@ STYLES: dict[Role, Style] = {
         },
     ),
     "unwrapped": Style("unwrapped", "image", {"colormap": "viridis", "interpolation2d": "nearest"}),
+    "jumps": Style(
+        "jumps",
+        "image",
+        {"colormap": "gray", "contrast_limits": (0.0, 1.0), "interpolation2d": "nearest"},
+    ),
     "cuts": Style(
         "cuts",
         "shapes",
         {"edge_color": CUT, "face_color": "transparent", "edge_width": 1.0, "opacity": 1.0},
+    ),
+    "residues": Style(
+        "residues",
+        "points",
+        {"border_color": _OUTLINE, "border_width": 0.2, "size": 4.0, "symbol": "square"},
     ),
     "wavevectors": Style(
         "wavevectors",
@@ -81,9 +115,28 @@ STYLES: dict[Role, Style] = {
             "size": 16.0,
         },
     ),
+    "barriers": Style("barriers", "shapes", _line(BARRIER)),
+    "bridges": Style("bridges", "shapes", _line(BRIDGE)),
+    "analysed": Style("region to analyse", "shapes", _line(ARROW)),
+    "left_out": Style("region to leave out", "shapes", _line(CUT)),
+    "steps": Style(
+        "last steps",
+        "vectors",
+        {"edge_color": STEP, "edge_width": 1.0, "vector_style": "line", "opacity": 0.9},
+    ),
+    "review": Style(
+        "singularities under review",
+        "points",
+        {"border_color": _OUTLINE, "border_width": 0.1, "size": 9.0, "opacity": 1.0},
+    ),
 }
 
-RASTERS: tuple[Role, ...] = ("amplitude", "phase", "unwrapped")
+RASTERS: tuple[Role, ...] = ("amplitude", "phase", "unwrapped", "jumps")
+PLANE: tuple[Role, ...] = (
+    "cuts", "residues", "wavevectors", "barriers", "bridges", "analysed", "left_out", "steps",
+    "review",
+)  # fmt: skip
+"""Layers that hold one frame at a time."""
 
 _EVENT_SYMBOLS = {
     "pair_birth": "star",
