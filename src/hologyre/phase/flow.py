@@ -19,7 +19,6 @@ FORBIDDEN = -1
 LARGEST_COST = 4095
 _UNSEEN = np.int32(2**31 - 1)
 _FARTHEST = 2**28
-_TILE = 64
 _NONE = np.uint32(2**32 - 1)
 _PLAIN, _POSITIVE, _NEGATIVE, _EARTH = 0, 1, 2, 3
 _TOO_FAR, _STUCK, _FULL = -1, -2, -3
@@ -102,12 +101,9 @@ def cheapest_flow(
 
 
 def _charged(charge: NDArray[np.integer], earth: NDArray[np.bool_]) -> NDArray[np.int64]:
-    """List the charged nodes, tile by tile so that neighbours stay close in memory."""
-    j, i = np.divmod(np.flatnonzero(charge != 0), charge.shape[1])
-    free = ~earth[j, i]
-    j, i = j[free], i[free]
-    order = np.lexsort((i, j, i // _TILE, j // _TILE))
-    return ((j[order] + 1) * (charge.shape[1] + 2) + i[order] + 1).astype(np.int64)
+    """List the nodes that hold a charge, row by row."""
+    j, i = np.divmod(np.flatnonzero((charge != 0) & ~earth), charge.shape[1])
+    return (j + 1) * (charge.shape[1] + 2) + i + 1
 
 
 # One record of 16 bytes a node, so that a search touches few lines of memory:
