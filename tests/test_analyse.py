@@ -25,10 +25,12 @@ from hologyre.analyse import (
     plan,
 )
 from hologyre.fields.interpolate import evaluate, on_pixels
+from hologyre.fields.refocus import refocus
 from hologyre.motion import Motion
 from hologyre.recipe import Recipe, RecipeError
 from hologyre.simulate.camera import Camera, record
 from hologyre.simulate.random_waves import RandomWaves
+from hologyre.singularities.locate import locate_singularities
 from hologyre.stacks import StackError, open_stack
 from hologyre.survey import survey
 from hologyre.tables import EVENTS, FRAMES, SINGULARITIES, TRAJECTORIES, empty
@@ -311,9 +313,28 @@ def test_undecided_recipe_is_refused(holograms: NDArray[Any]) -> None:
         analyse(holograms, Recipe())
 
 
-def test_refocusing_is_refused_rather_than_ignored(holograms: NDArray[Any], recipe: Recipe) -> None:
-    with pytest.raises(RecipeError, match=r"refocus\.distance_um: 5\.0 um was asked for"):
+def test_refocusing_without_the_wavelength_is_refused(
+    holograms: NDArray[Any], recipe: Recipe
+) -> None:
+    with pytest.raises(RecipeError, match=r"refocus\.distance_um: refocusing needs optics\.wave"):
         analyse(holograms, recipe.with_settings({"refocus.distance_um": 5.0}))
+
+
+@pytest.mark.parametrize("method", ["mixed", "assignment"])
+def test_refocused_frames_are_searched_at_their_new_depth(
+    holograms: NDArray[Any], recipe: Recipe, method: str
+) -> None:
+    lens = recipe.with_settings(
+        {"refocus.distance_um": 2.0, "optics.wavelength_nm": 500.0, "motion.method": method}
+    )
+    result, flat = analyse(holograms[:3], lens), analyse(holograms[:3], recipe)
+    assert result.frames["z_um"].tolist() == [2.0] * 3
+    expected = refocus(flat.fields[1], 2.0, optics=lens.optics.values())
+    np.testing.assert_array_equal(result.fields[1].values, expected.values)
+    found = locate_singularities(expected)
+    here = result.singularities.query("frame == 1")
+    np.testing.assert_array_equal(here["y_px"], found["y_px"])
+    assert not result.frames["audit"].str.contains("turns along the border").any()
 
 
 def test_iter_frames_wants_a_recipe_and_workers(holograms: NDArray[Any], recipe: Recipe) -> None:

@@ -18,6 +18,7 @@ if TYPE_CHECKING:
     from hologyre.fields.demodulate import demodulate
     from hologyre.fields.interpolate import evaluate, on_pixels, resample
     from hologyre.fields.noise import NoiseMap, field_noise
+    from hologyre.fields.refocus import refocus
     from hologyre.fields.wavevector import current, local_wavevector
     from hologyre.grid import Field, Grid, Window
     from hologyre.motion import Motion, audit, follow_threads, link_singularities
@@ -69,6 +70,7 @@ _HOMES = {
     "on_pixels": "hologyre.fields.interpolate",
     "open_stack": "hologyre.stacks",
     "resample": "hologyre.fields.interpolate",
+    "refocus": "hologyre.fields.refocus",
     "residues": "hologyre.phase.residues",
     "save_recipe": "hologyre.recipe",
     "survey": "hologyre.survey",
@@ -111,6 +113,7 @@ __all__ = [
     "locate_singularities",
     "on_pixels",
     "open_stack",
+    "refocus",
     "resample",
     "residues",
     "save_recipe",

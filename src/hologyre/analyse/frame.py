@@ -16,6 +16,7 @@ from hologyre.fields.compensate import compensate
 from hologyre.fields.demodulate import demodulate
 from hologyre.fields.interpolate import evaluate
 from hologyre.fields.noise import NoiseMap, field_noise
+from hologyre.fields.refocus import refocus
 from hologyre.grid import Field, Window
 from hologyre.singularities.locate import locate_singularities
 from hologyre.stacks import StackError
@@ -91,11 +92,13 @@ def measure(plan: Plan, frame: int) -> FrameResult:
         found = find_carrier(without_gaps(counts), radius=plan.carrier.radius)
         if isinstance(found, NoFringes):
             return _skipped(plan, frame, f"no fringes: {found.reason}", known)
+    shown, taken_out = _corrected(plan, field)
     # a phase that is taken out moves no zero: they are found in the field as it was read
-    table = locate_singularities(field, noise=noise, margin_px=plan.recipe.singularities.margin_px)
-    known["border_winding"] = border_winding(field, plan.recipe.singularities.margin_px)
-    field, taken_out = _compensated(plan, field)
-    return _done(plan, frame, field, table, known | taken_out)
+    searched = shown if plan.recipe.refocus.distance_um else field
+    margin_px = plan.recipe.singularities.margin_px
+    table = locate_singularities(searched, noise=noise, margin_px=margin_px)
+    known["border_winding"] = border_winding(searched, margin_px)
+    return _done(plan, frame, shown, table, known | taken_out)
 
 
 def field_of(plan: Plan, frame: int) -> Field:
@@ -110,7 +113,7 @@ def field_of(plan: Plan, frame: int) -> Field:
     fault = frame_fault(counts, saturation_of(plan.recipe))
     if fault:
         raise ValueError(f"frame: {frame} cannot be used: {fault.reason}")
-    return _in_whole(plan, _compensated(plan, _field(plan, counts))[0])
+    return _in_whole(plan, _corrected(plan, _field(plan, counts))[0])
 
 
 def _field(plan: Plan, counts: NDArray[Any]) -> Field:
@@ -127,18 +130,24 @@ def _field(plan: Plan, counts: NDArray[Any]) -> Field:
     )
 
 
-def _compensated(plan: Plan, field: Field) -> tuple[Field, dict[str, float]]:
-    """Take out the surface the recipe asks for; tell what of it goes into the table."""
-    settings = plan.recipe.compensation
-    if settings.family == "none":
-        return field, {}
-    found = compensate(field, family=settings.family, order=settings.order, method=settings.method)
-    tilt_y, tilt_x = found.tilt_rad_per_px
-    return found.field, {
-        "piston_rad": found.piston_rad,
-        "tilt_y_rad_per_px": tilt_y,
-        "tilt_x_rad_per_px": tilt_x,
-    }
+def _corrected(plan: Plan, field: Field) -> tuple[Field, dict[str, float]]:
+    """Take out the surface the recipe asks for and refocus; tell what goes into the table."""
+    settings, distance_um = plan.recipe.compensation, plan.recipe.refocus.distance_um
+    taken_out: dict[str, float] = {}
+    if settings.family != "none":
+        found = compensate(
+            field, family=settings.family, order=settings.order, method=settings.method
+        )
+        field = found.field
+        tilt_y, tilt_x = found.tilt_rad_per_px
+        taken_out = {
+            "piston_rad": found.piston_rad,
+            "tilt_y_rad_per_px": tilt_y,
+            "tilt_x_rad_per_px": tilt_x,
+        }
+    if distance_um:
+        field = refocus(field, distance_um, optics=plan.optics)
+    return field, taken_out
 
 
 def _mean_counts(plan: Plan, counts: NDArray[Any]) -> float:

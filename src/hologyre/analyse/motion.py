@@ -43,7 +43,8 @@ def link(
         return Motion(empty(TRAJECTORIES), empty(EVENTS))
     settings = plan.recipe.motion
     margin_px = plan.recipe.singularities.margin_px
-    if settings.method == "assignment" and plan.recipe.stack.region is None:
+    whole = plan.recipe.stack.region is None and not plan.recipe.refocus.distance_um
+    if settings.method == "assignment" and whole:
         motion = link_singularities(
             singularities,
             max_step_px=settings.max_step_px,

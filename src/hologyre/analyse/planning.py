@@ -55,17 +55,18 @@ def plan(stack: xr.DataArray | ArrayLike, recipe: Recipe) -> Plan:
         raise RecipeError(
             f'{", ".join(undecided)}: still "auto"; give values, or let hologyre.survey decide.'
         )
-    if recipe.refocus.distance_um:
+    optics = recipe.optics.values()
+    if recipe.refocus.distance_um and (optics.wavelength_nm is None or optics.pixel_um is None):
         raise RecipeError(
-            f"refocus.distance_um: {recipe.refocus.distance_um} um was asked for and this version "
-            "cannot refocus; set it to 0."
+            "refocus.distance_um: refocusing needs optics.wavelength_nm and optics.pixel_um; give "
+            "both, or set the distance to 0."
         )
     frames, left_out = chosen_frames(stack, recipe)
     return Plan(
         stack,
         recipe,
         carrier_of(recipe),
-        recipe.optics.values(),
+        optics,
         _blanks(recipe, (stack.sizes["y"], stack.sizes["x"])),
         left_out,
         tuple(frames),
