@@ -116,3 +116,15 @@ def test_a_stack_is_not_evaluated_at_points(band: Band, spectrum: np.ndarray) ->
 def test_a_step_must_be_positive(band: Band, spectrum: np.ndarray) -> None:
     with pytest.raises(ValueError, match="step_px: expected a positive number, got 0"):
         resample(band.field(spectrum, "band"), 0)
+
+
+def test_slopes_are_exact_at_a_sample_of_the_oversampled_copy_too(
+    band: Band, spectrum: np.ndarray
+) -> None:
+    field = band.field(spectrum, "band")
+    ready = interpolant(field)
+    y = ready.origin_px[0] + ready.step_px[0] * np.arange(4.0)
+    x = ready.origin_px[1] + ready.step_px[1] * np.arange(4.0)
+    found, exact = ready(y, x), evaluate(field, y, x)
+    for one, other in zip(found, exact, strict=True):
+        assert np.abs(one - other).max() < 1e-9 * np.abs(spectrum).sum()

@@ -10,6 +10,7 @@ from hologyre.grid import Window
 from hologyre.simulate.truth import (
     Truth,
     TruthError,
+    _bridge,
     check_conservation,
     find_zeros,
     true_tracks,
@@ -183,3 +184,12 @@ def test_no_frames_are_refused() -> None:
     wave = RandomWaves("disc", 24.0)
     with pytest.raises(ValueError, match="n_frames: expected 1 or more, got 0"):
         true_tracks(wave, WINDOW, 0)
+
+
+def test_a_line_that_ends_on_the_other_charge_is_refused() -> None:
+    beam = VortexBeam.hosting([(50.0, 45.0)], waist_px=60, centre_px=(50, 50), zeta_rate=0.1)
+    window = Window(0, 100, 0, 100)
+    before, after = find_zeros(beam, window, 0.0), find_zeros(beam, window, 1.0)
+    flipped = after.assign(charge=-after["charge"])
+    with pytest.raises(TruthError, match="one of the other charge"):
+        _bridge(beam, window, before, flipped, 0)

@@ -72,3 +72,12 @@ def test_a_line_of_zeros_is_refused() -> None:
     # Two plane waves alone vanish along lines.
     with pytest.raises(TruthError, match="at t = 0"):
         find_zeros(ThreeWaves(24.0, third=0.0), Window(0.1, 60.3, 0.2, 70.0))
+
+
+def test_zeros_that_do_not_add_up_are_told_with_both_counts(
+    monkeypatch: pytest.MonkeyPatch,
+) -> None:
+    monkeypatch.setattr("hologyre.simulate.zeros._REFINEMENTS", 1)
+    beam = VortexBeam.hosting([(50.0, 45.0)], waist_px=60, centre_px=(50, 50))
+    with pytest.raises(TruthError, match=r"1 zeros of total charge \+1 .* winds \+1 times"):
+        find_zeros(beam, Window(0, 100, 0, 100))

@@ -192,6 +192,7 @@ def _try_bridge(
     refine: int,
 ) -> _Bridge:
     old, new = _spots(before), _spots(after)
+    turn, new_turn = before["charge"].to_numpy(), after["charge"].to_numpy()
     close = _SAME * wave.finest_px
     ends = follow(wave, window, old[:, 0], old[:, 1], frame, frame + 1.0, refine=refine)
     links, losses, missed_before, missed_after = _sort_ends(
@@ -199,6 +200,8 @@ def _try_bridge(
     )
     if len(set(links.values())) != len(links):
         raise _Tangled("two lines of zeros ended on one zero")
+    if any(turn[i] != new_turn[j] for i, j in links.items()):
+        raise _Tangled("a line of zeros ended on one of the other charge")
     rest = np.setdiff1d(np.arange(len(new)), list(links.values()))
     back = follow(wave, window, new[rest, 0], new[rest, 1], frame + 1.0, frame, refine=refine)
     wrong, gains, more_after, more_before = _sort_ends(
@@ -207,6 +210,9 @@ def _try_bridge(
     if wrong:
         raise _Tangled("a line of zeros goes over in one direction of time only")
     gains = [g._replace(lines=tuple(int(rest[i]) for i in g.lines)) for g in gains]
+    for happenings, charge in ((losses, turn), (gains, new_turn)):
+        if any(len(h.lines) == 2 and charge[list(h.lines)].sum() for h in happenings):
+            raise _Tangled("two lines of zeros of one charge ended in each other")
     return _Bridge(links, losses, gains, missed_before + more_before, missed_after + more_after)
 
 

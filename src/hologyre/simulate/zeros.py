@@ -77,7 +77,7 @@ def find_zeros(wave: Wave, window: Window, t: float = 0.0) -> pd.DataFrame:
         before = charge
         step /= 2
     raise TruthError(
-        f"{charge.size} zeros of total charge {charge.sum():+d} found at t = {t:g}, "
+        f"{charge.size} zeros of total charge {int(charge.sum()):+d} found at t = {t:g}, "
         f"but the phase winds {winding:+d} times along the border"
     )
 
