@@ -31,9 +31,7 @@ _MEASURED = (
     Column("robustness_snr", "float64", "robustness over the noise of the field"),
     Column("trust", "float64", "probability that the noise-free field has it, 0 to 1"),
     Column("axis_ratio", "float64", "minor over major axis of the core, 0 to 1"),
-    Column(
-        "orientation_rad", "float64", "long axis of the core, from +x to +y, in [0, pi)"
-    ),
+    Column("orientation_rad", "float64", "long axis of the core, from +x to +y, in [0, pi)"),
     Column("origin", "str", "found, placed or moved"),
 )
 _SINGULARITY = Column("singularity", "int64", "id that stays the same through linking and review")
@@ -52,9 +50,7 @@ TRAJECTORIES = (
     _TIME,
     *_POSITION,
     *_MEASURED,
-    Column(
-        "link", "str", "how it was joined to the row before: thread, assigned, bridged, hand"
-    ),
+    Column("link", "str", "how it was joined to the row before: thread, assigned, bridged, hand"),
     _SINGULARITY,
 )
 
