@@ -7,6 +7,7 @@ import pytest
 
 from hologyre.motion import audit, follow_threads, link_singularities
 from hologyre.simulate.truth import border_winding
+from hologyre.tables import EVENTS, TRAJECTORIES, empty
 
 
 def table(*rows: tuple[int, float, float, int]) -> pd.DataFrame:
@@ -56,6 +57,29 @@ def test_an_event_that_changes_the_charge_is_told():
     motion = link_singularities(table(*rows), max_step_px=3.0, frame_shape=(100, 100))
     forged = motion.trajectories.assign(charge=1)
     assert "pair death that changes the charge by -2" in set(audit(forged, motion.events)["audit"])
+
+
+def test_charges_of_all_tracks_of_an_event_are_added_up():
+    # a track of +1 parts into +1, +1 and -1 (kept), later one of +1 parts into +1 and +1 (not)
+    tracks = {0: (0, 1), 1: (1, 1), 2: (1, 1), 3: (1, -1), 4: (2, 1), 5: (2, 1)}
+    ends = {0: 1, 1: 2}
+    rows = [
+        (track, frame, 10.0, 10.0, charge)
+        for track, (first, charge) in tracks.items()
+        for frame in range(first, ends.get(track, 3))
+    ]
+    trajectories = pd.DataFrame(rows, columns=["track", "frame", "y_px", "x_px", "charge"])
+    events = pd.DataFrame(
+        [("split", 0, 1, "0;1;2;3"), ("entry", 0, 1, "2"), ("split", 1, 2, "1;4;5")],
+        columns=["kind", "frame_before", "frame_after", "tracks"],
+    )
+    found = audit(trajectories, events, frames=range(3))
+    assert found["audit"].tolist() == ["ok", "ok", "split that changes the charge by +1"]
+
+
+def test_frames_in_which_nothing_is_left_are_audited():
+    found = audit(empty(TRAJECTORIES), empty(EVENTS), {0: 0, 1: 1}, frames=[0, 1])
+    assert found["audit"].tolist() == ["ok", "charge +0 but +1 turns along the border"]
 
 
 def test_frames_without_singularities_are_counted_too():

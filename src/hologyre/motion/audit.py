@@ -8,6 +8,8 @@ import numpy as np
 import pandas as pd
 from numpy.typing import NDArray
 
+_INNER = ("pair_birth", "pair_death", "split", "merge")
+
 
 def audit(
     trajectories: pd.DataFrame,
@@ -72,24 +74,32 @@ def audit(
 
 def _unbalanced(trajectories: pd.DataFrame, events: pd.DataFrame) -> list[tuple[int, str]]:
     """Return the events within the frame whose charges do not cancel."""
-    charge = trajectories.groupby("track")["charge"].first()
-    first = trajectories.groupby("track")["frame"].min()
-    inner = events[events["kind"].isin(["pair_birth", "pair_death", "split", "merge"])]
-    wrong = []
-    for row in inner.itertuples():
-        tracks = [int(t) for t in row.tracks.split(";")]
-        began = first.loc[tracks] >= row.frame_after
-        change = int(np.where(began, charge.loc[tracks], -charge.loc[tracks]).sum())
-        if change:
-            kind = str(row.kind).replace("_", " ")
-            wrong.append((int(row.frame_after), f"{kind} that changes the charge by {change:+d}"))
-    return wrong
+    by_track = trajectories.groupby("track")
+    charge, first = by_track["charge"].first(), by_track["frame"].min()
+    inner = events.loc[events["kind"].isin(_INNER), ["kind", "frame_after", "tracks"]]
+    named = inner["tracks"].str.split(";")
+    # one row for each track that an event names
+    event = np.repeat(np.arange(len(inner)), named.str.len())
+    track = named.explode().astype(np.int64)
+    began = first.loc[track].to_numpy() >= inner["frame_after"].to_numpy()[event]
+    change = np.zeros(len(inner), dtype=np.int64)
+    np.add.at(change, event, np.where(began, 1, -1) * charge.loc[track].to_numpy())
+    wrong = inner.assign(change=change)[change != 0]
+    return [
+        (
+            row.frame_after,
+            f"{row.kind.replace('_', ' ')} that changes the charge by {row.change:+d}",
+        )
+        for row in wrong.itertuples()
+    ]
 
 
 def _unaccounted(
     trajectories: pd.DataFrame, events: pd.DataFrame, searched: NDArray[np.int64]
 ) -> list[tuple[int, int, str]]:
     """Return (frame, number, what) of ends, starts and absences that no event explains."""
+    if trajectories.empty:
+        return []
     ordered = trajectories.sort_values(["track", "frame"])
     track = ordered["track"].to_numpy()
     place = np.searchsorted(searched, ordered["frame"].to_numpy())
