@@ -12,8 +12,8 @@ from hologyre.singularities.winding import BEND_SLACK
 PARTS = 4
 """Parts a doubtful cell is cut into along each axis."""
 
-_STENCIL = 8
-_FIRST = _STENCIL // 2 - 1
+STENCIL = 8
+FIRST = STENCIL // 2 - 1
 
 
 def _lagrange() -> NDArray[np.float64]:
@@ -24,16 +24,17 @@ def _lagrange() -> NDArray[np.float64]:
     (8, 8) array
         Coefficient of each power, highest first, for each sample.
     """
-    nodes = np.arange(_STENCIL) - float(_FIRST)
+    nodes = np.arange(STENCIL) - float(FIRST)
     columns = []
-    for k in range(_STENCIL):
+    for k in range(STENCIL):
         others = np.delete(nodes, k)
         columns.append(np.poly(others) / np.prod(nodes[k] - others))
     return np.ascontiguousarray(np.stack(columns, axis=1))
 
 
-_BASIS = _lagrange()
-_QUARTERS = np.stack([np.polyval(_BASIS, q / PARTS) for q in range(PARTS + 1)])
+BASIS = _lagrange()
+QUARTERS = np.stack([np.polyval(BASIS, q / PARTS) for q in range(8)], axis=1)
+"""Weights at the quarters, (samples, quarters); eight of them, which makes whole vectors."""
 
 
 def cut_error(band: float) -> float:
@@ -49,10 +50,40 @@ def cut_error(band: float) -> float:
 
 
 @numba.njit(cache=True, nogil=True)
+def _beyond(n_re, n_im, a, b, c, d, s_re, s_im):  # type: ignore[no-untyped-def]
+    """Return how far the corners, drawn by minus s, lie along n, times the length of n."""
+    low = min(n_re * a[0] + n_im * a[1], n_re * b[0] + n_im * b[1])
+    high = min(n_re * c[0] + n_im * c[1], n_re * d[0] + n_im * d[1])
+    return min(low, high) - max(0.0, n_re * s_re + n_im * s_im)
+
+
+@numba.njit(cache=True, nogil=True)
+def near_zero(a, b, c, d, s_re, s_im, bow):  # type: ignore[no-untyped-def]
+    """Tell whether a patch within `bow` of its corners' hull, drawn by minus s, may reach zero.
+
+    The corners (re, im) go round the patch. Two directions are tried: to the corners' mean, and
+    across the patch's longer side, which tells more where the patch is nearly flat.
+    """
+    m_re, m_im = a[0] + b[0] + c[0] + d[0], a[1] + b[1] + c[1] + d[1]
+    x_re, x_im = b[0] + c[0] - a[0] - d[0], b[1] + c[1] - a[1] - d[1]
+    y_re, y_im = c[0] + d[0] - a[0] - b[0], c[1] + d[1] - a[1] - b[1]
+    long_x = x_re * x_re + x_im * x_im > y_re * y_re + y_im * y_im
+    n_re = -x_im if long_x else -y_im
+    n_im = x_re if long_x else y_re
+    turn = 1.0 if n_re * m_re + n_im * m_im > 0.0 else -1.0
+    n_re, n_im = turn * n_re, turn * n_im
+    along = _beyond(m_re, m_im, a, b, c, d, s_re, s_im)
+    across = _beyond(n_re, n_im, a, b, c, d, s_re, s_im)
+    near_along = along <= bow * np.sqrt(m_re * m_re + m_im * m_im)
+    near_across = across <= bow * np.sqrt(n_re * n_re + n_im * n_im)
+    return near_along & near_across
+
+
+@numba.njit(cache=True, nogil=True)
 def doubtful(planes, bend):  # type: ignore[no-untyped-def]
     """Tell which cells cannot be seen at a glance to hold no zero.
 
-    A cell's image lies in the hull of its corners, drawn towards the mean of their second
+    A cell's image lies in the hull of its corners, drawn against the mean of their second
     differences, and as far around it as those differ. Where that hull is on one side of zero
     there is none.
 
@@ -68,14 +99,8 @@ def doubtful(planes, bend):  # type: ignore[no-untyped-def]
         p, q, p_n, q_n = bend[2, j], bend[3, j], bend[2, j + 1], bend[3, j + 1]
         for i in range(nx - 1):
             c = i + HALO
-            m_re = re[c] + re[c + 1] + re_n[c] + re_n[c + 1]
-            m_im = im[c] + im[c + 1] + im_n[c] + im_n[c + 1]
             s_re = 0.25 * (p[i] + p[i + 1] + p_n[i] + p_n[i + 1])
             s_im = 0.25 * (q[i] + q[i + 1] + q_n[i] + q_n[i + 1])
-            least = min(
-                min(m_re * re[c] + m_im * im[c], m_re * re[c + 1] + m_im * im[c + 1]),
-                min(m_re * re_n[c] + m_im * im_n[c], m_re * re_n[c + 1] + m_im * im_n[c + 1]),
-            )
             spread = max(
                 max(
                     (p[i] - s_re) ** 2 + (q[i] - s_im) ** 2,
@@ -86,41 +111,46 @@ def doubtful(planes, bend):  # type: ignore[no-untyped-def]
                     (p_n[i + 1] - s_re) ** 2 + (q_n[i + 1] - s_im) ** 2,
                 ),
             )
-            drawn = min(0.0, -(m_re * s_re + m_im * s_im) / 8.0)
             around = BEND_SLACK * np.sqrt(spread) + 0.05 * np.sqrt(s_re * s_re + s_im * s_im)
-            size = np.sqrt(m_re * m_re + m_im * m_im)
-            out[j, i] = least + drawn <= around / 8.0 * size
+            out[j, i] = near_zero(
+                (re[c], im[c]),
+                (re[c + 1], im[c + 1]),
+                (re_n[c + 1], im_n[c + 1]),
+                (re_n[c], im_n[c]),
+                s_re / 8.0,
+                s_im / 8.0,
+                around / 8.0,
+            )
     return out
 
 
 @numba.njit(cache=True, nogil=True)
 def cut_cell(planes, j, i, fine):  # type: ignore[no-untyped-def]
-    """Fill `fine` (2, 5, 5) with the field at the quarters of cell (j, i)."""
-    row = np.empty((PARTS + 1, _STENCIL))
+    """Fill the first five columns of `fine` (2, 5, 8) with the field at cell (j, i)'s quarters."""
+    row = np.empty((PARTS + 1, STENCIL))
+    fine[:] = 0.0
     for part in range(2):
+        row[:] = 0.0
         for v in range(PARTS + 1):
-            for k in range(_STENCIL):
-                row[v, k] = 0.0
-            for r in range(_STENCIL):
-                weight = _QUARTERS[v, r]
-                for k in range(_STENCIL):
-                    row[v, k] += weight * planes[part, j + HALO - _FIRST + r, i + HALO - _FIRST + k]
+            for r in range(STENCIL):
+                weight = QUARTERS[r, v]
+                for k in range(STENCIL):
+                    row[v, k] += weight * planes[part, j + HALO - FIRST + r, i + HALO - FIRST + k]
         for v in range(PARTS + 1):
-            for u in range(PARTS + 1):
-                total = 0.0
-                for k in range(_STENCIL):
-                    total += row[v, k] * _QUARTERS[u, k]
-                fine[part, v, u] = total
+            for k in range(STENCIL):
+                weight = row[v, k]
+                for u in range(8):
+                    fine[part, v, u] += weight * QUARTERS[k, u]
 
 
 @numba.njit(cache=True, nogil=True)
 def _basis_at(u, weights):  # type: ignore[no-untyped-def]
-    """Fill the samples' weights for the value and for the slope at one place."""
+    """Fill the samples' weights for the value and the slope at one place."""
     weights[:] = 0.0
-    for d in range(_STENCIL):
-        for k in range(_STENCIL):
+    for d in range(STENCIL):
+        for k in range(STENCIL):
             weights[1, k] = weights[1, k] * u + weights[0, k]
-            weights[0, k] = weights[0, k] * u + _BASIS[d, k]
+            weights[0, k] = weights[0, k] * u + BASIS[d, k]
 
 
 @numba.njit(cache=True, nogil=True)
@@ -129,24 +159,24 @@ def cut_part(planes, j, i, v, u, size, fine, det):  # type: ignore[no-untyped-de
 
     Fills `fine` (2, 5, 5) with the field and `det` (5, 5) with det J, per square step.
     """
-    across = np.empty((PARTS + 1, 2, _STENCIL))
-    down = np.empty((2, _STENCIL))
-    row = np.empty((2, 2, _STENCIL))
+    across = np.empty((PARTS + 1, 2, STENCIL))
+    down = np.empty((2, STENCIL))
+    row = np.empty((2, 2, STENCIL))
     for q in range(PARTS + 1):
         _basis_at(u + size * q / PARTS, across[q])
     for p in range(PARTS + 1):
         _basis_at(v + size * p / PARTS, down)
         row[:] = 0.0
         for part in range(2):
-            for r in range(_STENCIL):
+            for r in range(STENCIL):
                 value, slope = down[0, r], down[1, r]
-                for k in range(_STENCIL):
-                    here = planes[part, j + HALO - _FIRST + r, i + HALO - _FIRST + k]
+                for k in range(STENCIL):
+                    here = planes[part, j + HALO - FIRST + r, i + HALO - FIRST + k]
                     row[part, 0, k] += value * here
                     row[part, 1, k] += slope * here
         for q in range(PARTS + 1):
             e_re = e_im = x_re = x_im = y_re = y_im = 0.0
-            for k in range(_STENCIL):
+            for k in range(STENCIL):
                 value, slope = across[q, 0, k], across[q, 1, k]
                 e_re += value * row[0, 0, k]
                 e_im += value * row[1, 0, k]
@@ -181,8 +211,7 @@ def judge(fine, bend_y, bend_x, coarse):  # type: ignore[no-untyped-def]
     y = x = 0.5
     for v in range(PARTS):
         for u in range(PARTS):
-            m_re, m_im, near = _near_zero(fine, v, u, bow)
-            if not near:
+            if not _part_near_zero(fine, v, u, bow):
                 continue
             # Corners' determinants of the bilinear patch: its extremes.
             lx_re, lx_im = fine[0, v, u + 1] - fine[0, v, u], fine[1, v, u + 1] - fine[1, v, u]
@@ -201,6 +230,8 @@ def judge(fine, bend_y, bend_x, coarse):  # type: ignore[no-untyped-def]
                 negative = True
             else:
                 unclear = True
+            m_re = 0.25 * (fine[0, v, u] + fine[0, v, u + 1] + fine[0, v + 1, u] + far_re)
+            m_im = 0.25 * (fine[1, v, u] + fine[1, v, u + 1] + fine[1, v + 1, u] + far_im)
             size = m_re * m_re + m_im * m_im
             if size < best:
                 best = size
@@ -231,7 +262,7 @@ def judge_parts(fine, det, bow, coarse, verdicts):  # type: ignore[no-untyped-de
     for v in range(PARTS):
         for u in range(PARTS):
             verdicts[v, u] = 0
-            if not _near_zero(fine, v, u, bow)[2]:
+            if not _part_near_zero(fine, v, u, bow):
                 continue
             d1, d2, d3, d4 = det[v, u], det[v, u + 1], det[v + 1, u], det[v + 1, u + 1]
             if min(min(d1, d2), min(d3, d4)) > slack:
@@ -243,22 +274,17 @@ def judge_parts(fine, det, bow, coarse, verdicts):  # type: ignore[no-untyped-de
 
 
 @numba.njit(cache=True, nogil=True)
-def _near_zero(fine, v, u, bow):  # type: ignore[no-untyped-def]
-    """Return the mean of a part's corners, and whether its image may reach zero."""
-    m_re = 0.25 * (fine[0, v, u] + fine[0, v, u + 1] + fine[0, v + 1, u] + fine[0, v + 1, u + 1])
-    m_im = 0.25 * (fine[1, v, u] + fine[1, v, u + 1] + fine[1, v + 1, u] + fine[1, v + 1, u + 1])
-    least = min(
-        min(
-            m_re * fine[0, v, u] + m_im * fine[1, v, u],
-            m_re * fine[0, v, u + 1] + m_im * fine[1, v, u + 1],
-        ),
-        min(
-            m_re * fine[0, v + 1, u] + m_im * fine[1, v + 1, u],
-            m_re * fine[0, v + 1, u + 1] + m_im * fine[1, v + 1, u + 1],
-        ),
+def _part_near_zero(fine, v, u, bow):  # type: ignore[no-untyped-def]
+    """Tell whether a part's image may reach zero."""
+    return near_zero(
+        (fine[0, v, u], fine[1, v, u]),
+        (fine[0, v, u + 1], fine[1, v, u + 1]),
+        (fine[0, v + 1, u + 1], fine[1, v + 1, u + 1]),
+        (fine[0, v + 1, u], fine[1, v + 1, u]),
+        0.0,
+        0.0,
+        bow,
     )
-    apart = least > 0.0 and least * least > bow * bow * (m_re * m_re + m_im * m_im)
-    return m_re, m_im, not apart
 
 
 @numba.njit(cache=True, nogil=True)

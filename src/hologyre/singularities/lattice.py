@@ -42,6 +42,8 @@ class Lattice:
         What short stencils err by between the nodes, over the second difference.
     floor : float
         Level below which the field is the arithmetic's own error.
+    radius_per_px : float
+        Radius of the disc of frequencies that holds the field, cycles/px.
     """
 
     planes: NDArray[np.float64]
@@ -51,6 +53,7 @@ class Lattice:
     table: NDArray[np.float64]
     coarse: float
     floor: float
+    radius_per_px: float
 
     @property
     def shape(self) -> tuple[int, int]:
@@ -62,6 +65,12 @@ class Lattice:
     ) -> tuple[NDArray[np.float64], NDArray[np.float64]]:
         """Turn node coordinates into hologram pixels."""
         return self.origin_px[0] + self.step_px[0] * y, self.origin_px[1] + self.step_px[1] * x
+
+    def to_nodes(self, y_px: float, x_px: float) -> tuple[float, float]:
+        """Turn a place in hologram pixels into node coordinates."""
+        y = (y_px - self.origin_px[0]) / self.step_px[0]
+        x = (x_px - self.origin_px[1]) / self.step_px[1]
+        return y, x
 
 
 def lattice_of(
@@ -147,6 +156,7 @@ def _from_periodic(field: Field, window: Window) -> Lattice:
         table,
         cut_error(band),
         _floor(cut, error, np.finfo(field.values.dtype).eps),
+        band_px,
     )
 
 
@@ -176,6 +186,7 @@ def _from_pixels(values: NDArray[np.complexfloating], window: Window) -> Lattice
         table,
         cut_error(band),
         _floor(plain, error, np.finfo(values.dtype).eps),
+        band,
     )
 
 

@@ -9,8 +9,12 @@ from numpy.typing import NDArray
 from hologyre.fields.noise import NoiseMap
 from hologyre.grid import Field
 from hologyre.singularities.cells import doubtful
+from hologyre.singularities.charges import UNRESOLVED, centred, joined
+from hologyre.singularities.core import cores
 from hologyre.singularities.lattice import lattice_of
+from hologyre.singularities.robustness import robustness
 from hologyre.singularities.search import find_zeros
+from hologyre.singularities.trust import noise_share, trust, trust_of_higher
 from hologyre.singularities.winding import bends, lattice_turns
 from hologyre.tables import SINGULARITIES, conform, empty
 
@@ -60,37 +64,62 @@ def locate_singularities(
     bend = bends(planes)
     turns_y, turns_x = lattice_turns(planes, table, bend)
     doubt = doubtful(planes, bend)
-    zeros, _ = find_zeros(
+    zeros, turns = find_zeros(
         planes, table, lattice.coarse, bend, turns_y, turns_x, doubt, lattice.floor
     )
-    y_px, x_px = lattice.to_px(zeros[:, 0], zeros[:, 1])
-    inside = np.flatnonzero(lattice.window.contains(y_px, x_px))
-    inside = inside[np.lexsort((x_px[inside], y_px[inside]))]
-    y_px, x_px, zeros = y_px[inside], x_px[inside], zeros[inside]
-    charges = zeros[:, 6].astype(np.int64)
-    dy = (zeros[:, 2] + 1j * zeros[:, 3]) / lattice.step_px[0]
-    dx = (zeros[:, 4] + 1j * zeros[:, 5]) / lattice.step_px[1]
-    variance = _variance_at(noise, y_px, x_px)
-    yy, xx, yx = np.abs(dy) ** 2, np.abs(dx) ** 2, (dx.conj() * dy).real
-    det = dx.real * dy.imag - dy.real * dx.imag
-    with np.errstate(divide="ignore", invalid="ignore"):
-        scale = variance / 2 / det**2
-        spread = np.sqrt((xx - yy) ** 2 + 4 * yx**2)
-        ratio = np.abs(det) * 2 / (xx + yy + spread)
-    orientation = (np.arctan2(2 * yx, xx - yy) / 2 + np.pi / 2) % np.pi
+    if zeros.shape[0] == 0:
+        return empty(SINGULARITIES)
+    variance = _variance_at(noise, *lattice.to_px(zeros[:, 0], zeros[:, 1]))
+    sigma = np.fmax(np.sqrt(variance), lattice.floor)
+    tree = robustness(lattice, turns, zeros, UNRESOLVED * sigma)
+    # What a change of the arithmetic's own size removes is the arithmetic's.
+    kept = tree.level > 2 * lattice.floor
+    vortices = joined(lattice, zeros, tree.alike, tree.level, sigma)
+    y_px, x_px = lattice.to_px(vortices.y, vortices.x)
+    chosen = np.flatnonzero(kept[vortices.first] & lattice.window.contains(y_px, x_px))
+    chosen = chosen[np.lexsort((x_px[chosen], y_px[chosen]))]
+    first, charge = vortices.first[chosen], vortices.charge[chosen]
+    slopes, level, variance = zeros[first, 2:6], tree.level[first], variance[first]
+    core = cores(
+        (slopes[:, 0] + 1j * slopes[:, 1]) / lattice.step_px[0],
+        (slopes[:, 2] + 1j * slopes[:, 3]) / lattice.step_px[1],
+    )
+    var_y, var_x, cov = core.covariance(variance)
+    sure = trust(
+        level, core.steep, core.flat, variance, noise_share(lattice, bend), lattice.radius_per_px
+    )
+    ratio, orientation = core.axis_ratio, core.orientation_rad
+    for row in np.flatnonzero(np.abs(charge) > 1):
+        vortex = chosen[row]
+        y, x, error = centred(
+            lattice,
+            float(vortices.y[vortex]),
+            float(vortices.x[vortex]),
+            int(charge[row]),
+            float(variance[row]),
+        )
+        y_px[vortex] = lattice.origin_px[0] + lattice.step_px[0] * y
+        x_px[vortex] = lattice.origin_px[1] + lattice.step_px[1] * x
+        var_y[row] = var_x[row] = error**2
+        cov[row] = 0.0
+        ratio[row] = orientation[row] = np.nan
+        sure[row] = trust_of_higher(float(level[row]), error, float(variance[row]))
     found = pd.DataFrame(
         {
-            "frame": np.zeros(charges.size, dtype=np.int64),
-            "y_px": y_px,
-            "x_px": x_px,
-            "charge": charges,
-            "sigma_y_px": np.sqrt(scale * xx),
-            "sigma_x_px": np.sqrt(scale * yy),
-            "cov_yx_px2": -scale * yx,
+            "frame": np.zeros(charge.size, dtype=np.int64),
+            "y_px": y_px[chosen],
+            "x_px": x_px[chosen],
+            "charge": charge,
+            "sigma_y_px": np.sqrt(var_y),
+            "sigma_x_px": np.sqrt(var_x),
+            "cov_yx_px2": cov,
+            "robustness": level,
+            "robustness_snr": level / np.sqrt(variance),
+            "trust": sure,
             "axis_ratio": ratio,
             "orientation_rad": orientation,
             "origin": "found",
-            "singularity": np.arange(charges.size),
+            "singularity": np.arange(charge.size),
         }
     )
     return conform(found, SINGULARITIES)

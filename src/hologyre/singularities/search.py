@@ -5,14 +5,14 @@ from __future__ import annotations
 import numba
 import numpy as np
 
-from hologyre.singularities.cells import PARTS, cut_cell, cut_part, judge, judge_parts
+from hologyre.singularities.cells import PARTS, cut_cell, cut_part, judge, judge_parts, near_zero
 from hologyre.singularities.kernel import HALO, scratch, value_and_slopes, value_at
 from hologyre.singularities.winding import BEND_SLACK, edge_turns
 
 _LEVELS = 24
 _MOST_CUTS = 800
 _MOST_PARTS = 128
-_LEFT = 1e-10
+_LEFT = 2e-8
 """Distance from the zero, in steps, that Newton's method may leave."""
 
 
@@ -25,7 +25,7 @@ def newton(planes, table, square, v, u, work, zero):  # type: ignore[no-untyped-
     """
     y, x, size = square
     slack = 0.02 * size + 1e-7
-    before = 0.0
+    before = 1e-9
     for _ in range(30):
         e, ey, ex = value_and_slopes(planes, table, v, u, work)
         det = ex.real * ey.imag - ey.real * ex.imag
@@ -37,8 +37,8 @@ def newton(planes, table, square, v, u, work, zero):  # type: ignore[no-untyped-
         if reach > size:
             du, dv = du * size / reach, dv * size / reach
         u, v = u + du, v + dv
-        if reach < 1e-7 or reach**3 < _LEFT * before**2:
-            # Steps shrink as their squares: the next one would be below what may be left.
+        if max(reach, before**2) * reach**2 < _LEFT * before**2:
+            # Steps shrink as their squares, by the last two of them or faster than by one.
             zero[0], zero[1] = v, u
             zero[2], zero[3], zero[4], zero[5] = ey.real, ey.imag, ex.real, ex.imag
             return max(abs(u - x - 0.5 * size), abs(v - y - 0.5 * size)) <= 0.5 * size + slack
@@ -55,19 +55,19 @@ def find_zeros(planes, table, coarse, bend, turns_y, turns_x, doubt, floor):  # 
 
     Returns
     -------
-    zeros : (n, 8) array
+    zeros : (n, 9) array
         Node coordinates y, x; real and imaginary part of the slopes along y and along x, per
         step; charge; 0 or, where Newton could not settle, the side of the smallest square
-        around the zero.
+        around the zero; number of the lattice cell, row by row.
     turns : (ny-1, nx-1) int8 array
         Winding of each lattice cell.
     """
     ny, nx = bend.shape[1], bend.shape[2]
     turns = np.empty((ny - 1, nx - 1), dtype=np.int8)
-    zeros = np.empty((8 * _MOST_CUTS, 8))
+    zeros = np.empty((8 * _MOST_CUTS, 9))
     found = 0
     work = scratch()
-    fine = np.empty((2, PARTS + 1, PARTS + 1))
+    fine = np.empty((2, PARTS + 1, 8))
     square = np.empty(3)
     for j in range(ny - 1):
         for i in range(nx - 1):
@@ -92,18 +92,21 @@ def find_zeros(planes, table, coarse, bend, turns_y, turns_x, doubt, floor):  # 
             if w == 0 and verdict != 2:
                 continue
             if found + 4 * _MOST_CUTS > zeros.shape[0]:
-                longer = np.empty((2 * zeros.shape[0], 8))
+                longer = np.empty((2 * zeros.shape[0], 9))
                 longer[:found] = zeros[:found]
                 zeros = longer
             if w == verdict:
                 square[0], square[1], square[2] = float(j), float(i), 1.0
                 if newton(planes, table, square, j + v, i + u, work, zeros[found]):
                     zeros[found, 6], zeros[found, 7] = w, 0.0
+                    zeros[found, 8] = j * (nx - 1) + i
                     found += 1
                     continue
+            start = found
             found = _settle(
                 planes, table, coarse, floor, j, i, w, bend_y, bend_x, zeros, found, work
             )
+            zeros[start:found, 8] = j * (nx - 1) + i
     return zeros[:found].copy(), turns
 
 
@@ -112,7 +115,7 @@ def _settle(  # type: ignore[no-untyped-def]
     planes, table, coarse, floor, j, i, w, bend_y, bend_x, zeros, found, work
 ):
     """Add the zeros of a cell that chords alone did not tell; return the zeros so far."""
-    fine = np.empty((2, PARTS + 1, PARTS + 1))
+    fine = np.empty((2, PARTS + 1, 8))
     det = np.empty((PARTS + 1, PARTS + 1))
     verdicts = np.empty((PARTS, PARTS), dtype=np.int64)
     # Squares within the cell, (v, u, side), and what is known of each: 2 to be cut.
@@ -192,16 +195,6 @@ def _turns_around(planes, table, square, bend_y, bend_x, work):  # type: ignore[
 
 
 @numba.njit(cache=True, nogil=True)
-def _may_vanish(a, b, c, d, bow):  # type: ignore[no-untyped-def]
-    """Tell whether a patch within `bow` of the corners' hull may reach zero."""
-    m = a + b + c + d
-    reach = bow * abs(m)
-    low = min(m.real * a.real + m.imag * a.imag, m.real * b.real + m.imag * b.imag)
-    high = min(m.real * c.real + m.imag * c.imag, m.real * d.real + m.imag * d.imag)
-    return min(low, high) <= reach
-
-
-@numba.njit(cache=True, nogil=True)
 def _cross(a, b):  # type: ignore[no-untyped-def]
     return a.real * b.imag - a.imag * b.real
 
@@ -249,7 +242,15 @@ def _split(  # type: ignore[no-untyped-def]
                 point[q, p] = value_at(planes, table, y + q * h, x + p * h, work)
         a, b, c, d = point[0, 0], point[0, 2], point[2, 2], point[2, 0]
         by, bx = bend_y * s * s, bend_x * s * s
-        if w == 0 and not _may_vanish(a, b, c, d, (bx + by) / 8.0):
+        if w == 0 and not near_zero(
+            (a.real, a.imag),
+            (b.real, b.imag),
+            (c.real, c.imag),
+            (d.real, d.imag),
+            0.0,
+            0.0,
+            (bx + by) / 8.0,
+        ):
             continue
         single = _one_sign(a, b, c, d, by, bx)
         if single and w == 0:

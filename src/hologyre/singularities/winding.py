@@ -152,3 +152,27 @@ def lattice_turns(planes, table, bend):  # type: ignore[no-untyped-def]
                         work,
                     )
     return along_y, along_x
+
+
+@numba.njit(cache=True, nogil=True)
+def path_turns(planes, table, corners, bend):  # type: ignore[no-untyped-def]
+    """Return the turns along a closed polygon of node coordinates (y, x), and |E| at its least.
+
+    `bend` bounds the second difference along any step of unit length.
+    """
+    work = scratch()
+    turns, least = 0, np.inf
+    for n in range(corners.shape[0]):
+        y, x = corners[n]
+        to_y, to_x = corners[(n + 1) % corners.shape[0]]
+        count = max(int(np.ceil(max(abs(to_y - y), abs(to_x - x)))), 1)
+        dy, dx = (to_y - y) / count, (to_x - x) / count
+        a = value_at(planes, table, y, x, work)
+        for k in range(1, count + 1):
+            v, u = (y + (k - 1) * dy, x + (k - 1) * dx)
+            at_y, at_x = (to_y, to_x) if k == count else (y + k * dy, x + k * dx)
+            b = value_at(planes, table, at_y, at_x, work)
+            turns += edge_turns(planes, table, v, u, dy, dx, a, b, bend, work)
+            least = min(least, abs(b))
+            a = b
+    return turns, least
