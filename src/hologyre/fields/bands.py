@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 from dataclasses import dataclass
+from functools import lru_cache
 from typing import Literal
 
 import numpy as np
@@ -70,15 +71,7 @@ class Band:
 
     def weights(self, window: FilterWindow = "disc") -> NDArray[np.float64]:
         """Return the filter's transmission, zero outside the disc and beyond Nyquist."""
-        distance = np.hypot(self.offsets(0)[:, None], self.offsets(1)[None, :])
-        # A bin on the rim belongs to the disc whatever the rounding of its frequency.
-        inside = distance <= self.radius * (1 + 1e-9)
-        for axis in (0, 1):
-            below = 2 * np.abs(self.bins(axis)) <= self.period[axis]
-            inside &= below[:, None] if axis == 0 else below[None, :]
-        if window == "disc":
-            return inside.astype(np.float64)
-        return np.where(inside, 0.5 + 0.5 * np.cos(np.pi * distance / self.radius), 0.0)
+        return _weights(self, window)
 
     def samples(self, sampling: Sampling) -> tuple[int, int]:
         """Return the number of samples along y and x."""
@@ -117,3 +110,18 @@ class Band:
             )
             values *= np.exp(2j * np.pi * tilt[1] * grid.x_px(shape[1])).astype(values.dtype)
         return Field(values, grid, tilt, self.radius)
+
+
+@lru_cache(maxsize=16)
+def _weights(band: Band, window: FilterWindow) -> NDArray[np.float64]:
+    distance = np.hypot(band.offsets(0)[:, None], band.offsets(1)[None, :])
+    # A bin on the rim belongs to the disc whatever the rounding of its frequency.
+    inside = distance <= band.radius * (1 + 1e-9)
+    for axis in (0, 1):
+        below = 2 * np.abs(band.bins(axis)) <= band.period[axis]
+        inside &= below[:, None] if axis == 0 else below[None, :]
+    weights = inside.astype(np.float64)
+    if window == "hann":
+        weights *= 0.5 + 0.5 * np.cos(np.pi * np.minimum(distance / band.radius, 1))
+    weights.flags.writeable = False
+    return weights

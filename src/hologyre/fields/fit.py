@@ -100,7 +100,7 @@ def within_disc(side: ComplexArray, shared: Shared, plan: Plan) -> ComplexArray:
     for _ in range(_STEPS):
         if power <= enough:
             break
-        image = inside * sandwich(y.side_gram, step, x.side_gram) + damping * step
+        image = inside * _on_frame(step, y.side_missing, x.side_missing) + damping * step
         length = power / np.vdot(step, image).real
         found = found + length * step
         left = left - length * image
@@ -108,6 +108,15 @@ def within_disc(side: ComplexArray, shared: Shared, plan: Plan) -> ComplexArray:
         step = left + (fresh / power) * step
         power = fresh
     return plan.side_coefficients(found)
+
+
+def _on_frame(amplitudes: ComplexArray, missing_y: RealArray, missing_x: RealArray) -> ComplexArray:
+    """Return the inner products on the frame of waves with these amplitudes."""
+    for missing in (missing_y, missing_x):
+        flat = np.ascontiguousarray(amplitudes).view(missing.dtype)
+        within: ComplexArray = (flat - missing @ (missing.T @ flat)).view(amplitudes.dtype)
+        amplitudes = within.T
+    return amplitudes
 
 
 def sandwich(left: RealArray, middle: ComplexArray, right: RealArray) -> ComplexArray:

@@ -37,8 +37,9 @@ class Axis:
     ----------
     side, zero : (m, K) real arrays
         From inner products with a band's waves to coordinates in its orthonormal sequences.
-    side_gram : (K, K) real array
-        Inner products of the sideband's waves on the frame.
+    side_missing : (K, few) real array
+        Inner products of the sideband's waves on the frame are the identity less this times
+        its transpose: what lies beyond the frame, on a torus not much longer.
     side_lift : (K, m) real array
         From coordinates back to inner products with waves.
     left, right : real arrays (m, few), (few, m')
@@ -53,7 +54,7 @@ class Axis:
 
     side: RealArray
     zero: RealArray
-    side_gram: RealArray
+    side_missing: RealArray
     side_lift: RealArray
     left: RealArray
     right: RealArray
@@ -72,7 +73,7 @@ class Axis:
         arrays = (
             side.analysis,
             zero.analysis,
-            side.gram,
+            side.missing,
             side.vectors * np.sqrt(side.energy),
             left,
             right,

@@ -37,9 +37,11 @@ def fill_holes(counts: RealArray, plan: Plan, usable: NDArray[np.bool_]) -> Real
     (y, x) real array
         A copy, filled.
     """
-    rows, columns = np.nonzero(~usable)
-    mean = counts[usable].mean()
-    frame = counts - mean
+    rows, columns = np.unravel_index(np.flatnonzero(~usable), usable.shape)
+    frame = counts.copy()
+    frame[rows, columns] = 0
+    mean = frame.dtype.type(frame.sum(dtype=np.float64) / (frame.size - rows.size))
+    frame -= mean
     frame[rows, columns] = 0
     solve = _solve_few if rows.size <= _FEW else _solve_many
     frame[rows, columns] = solve(frame, plan, rows, columns)

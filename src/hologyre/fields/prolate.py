@@ -8,6 +8,9 @@ from functools import lru_cache
 import numpy as np
 from numpy.typing import NDArray
 
+_FULL = 1e-7
+"""Share beyond the frame under which a sequence is taken to lie within it."""
+
 
 @dataclass(frozen=True, eq=False)
 class AxisBasis:
@@ -47,9 +50,15 @@ class AxisBasis:
         return np.exp(1j * turn)
 
     @property
-    def gram(self) -> NDArray[np.float64]:
-        """Gram matrix (K, K) of the bins' waves on the frame."""
-        return overlap(self.bins, self.bins, self.pixels, self.period)
+    def missing(self) -> NDArray[np.float64]:
+        """What is missing of the inner products of the bins' waves to an identity.
+
+        Matrix (K, few) whose product with its transpose is the identity less those products.
+        """
+        gram = overlap(self.bins, self.bins, self.pixels, self.period)
+        values, vectors = np.linalg.eigh(gram)
+        kept = values < 1 - _FULL
+        return np.asarray(vectors[:, kept] * np.sqrt(1 - np.maximum(values[kept], 0)))
 
     @property
     def waves(self) -> NDArray[np.complex128]:

@@ -25,7 +25,7 @@ def saturation_level(frame: NDArray[Any]) -> float | None:
         return float(top)
     if at_top < _FEWEST or at_top == frame.size:
         return None
-    depth = max(0.1 * float(np.std(frame, dtype=np.float64)), 1.0)
+    depth = max(0.1 * float(np.std(frame[::4, ::4], dtype=np.float64)), 1.0)
     nearby = int(np.count_nonzero(frame > top - depth)) - at_top
     # Counts that are no whole numbers hardly ever meet twice.
     expected = nearby / depth if float(top).is_integer() else 0.0
@@ -50,7 +50,7 @@ def usable_pixels(
         Infinity switches the search off.
     """
     level = saturation_level(frame) if saturation is None else saturation
-    usable = None if level is None else frame < level
+    usable = None if level is None or level == np.inf else frame < level
     if valid is not None:
         usable = valid if usable is None else usable & valid
     return None if usable is None or usable.all() else usable
