@@ -95,10 +95,10 @@ def main() -> None:
     run(python, "-m", "ruff", "format", "--check")
     run(python, "-m", "mypy")
     run(BIN / "lint-imports")
-    run(python, "-m", "pytest", "-m", "not viewer", "-p", "no:pytest-qt", *sys.argv[1:])
+    run(python, "-m", "pytest", "--ignore=tests/viewer", "-p", "no:pytest-qt", *sys.argv[1:])
     run(python, "-m", "pip", "install", "-q", ".[viewer]")
     screen = ["xvfb-run", "-a", "-s", "-screen 0 1920x1080x24"] if shutil.which("xvfb-run") else []
-    run(*screen, python, "-m", "pytest", "-m", "viewer", *sys.argv[1:])
+    run(*screen, python, "-m", "pytest", "tests/viewer", *sys.argv[1:])
 
 
 if __name__ == "__main__":

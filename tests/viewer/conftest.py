@@ -1,7 +1,6 @@
 from __future__ import annotations
 
 from collections.abc import Callable
-from pathlib import Path
 from typing import Any
 
 import numpy as np
@@ -12,14 +11,6 @@ from numpy.typing import NDArray
 from hologyre.recipe import Recipe
 from hologyre.stacks import as_stack
 from hologyre.survey import survey
-
-HERE = Path(__file__).parent
-
-
-def pytest_collection_modifyitems(items: list[pytest.Item]) -> None:
-    for item in items:
-        if HERE in item.path.parents:
-            item.add_marker(pytest.mark.viewer)
 
 
 @pytest.fixture(scope="session")
