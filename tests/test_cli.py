@@ -18,6 +18,7 @@ import tifffile
 from numpy.typing import NDArray
 
 from hologyre.cli import main
+from hologyre.edits import Log, Place
 from hologyre.recipe import load_recipe
 from hologyre.results import load_result
 
@@ -87,6 +88,54 @@ def test_keep_fields_writes_them(hologyre: Any, stack_file: Path, tmp_path: Path
     fields = load_result(tmp_path).fields
     assert fields is not None
     assert len(fields) == 2
+
+
+def test_annotations_are_replayed(hologyre: Any, stack_file: Path, tmp_path: Path) -> None:
+    log = tmp_path / "ada.jsonl"
+    Log(log).append(Place(frame=1, where=(3.0, 3.0), charge=1, winding=1))
+    out = tmp_path / "out"
+    options = ("run", stack_file, "--out", out, "--frames", ":2", "--annotations", log)
+    assert hologyre(*options).status == 0
+    result = load_result(out)
+    assert result.singularities["origin"].eq("placed").sum() == 1
+    assert result.annotations == out / "edits.jsonl"
+    done = hologyre(*options, "--resume")
+    assert done.status == 0
+    assert "2 of 2 frames measured" in done.out
+
+
+def test_edits_that_do_not_fit_are_told_and_the_run_is_done(
+    hologyre: Any, stack_file: Path, tmp_path: Path
+) -> None:
+    log = tmp_path / "ada.jsonl"
+    Log(log).append(Place(frame=5, where=(3.0, 3.0), charge=1, winding=1))
+    options = ("--out", tmp_path / "out", "--frames", ":2", "--annotations", log)
+    done = hologyre("run", stack_file, *options)
+    assert done.status == 0
+    assert "hologyre: speckle: Edit 1 (place): Frame 5 is not among the frames" in done.err
+
+
+@pytest.mark.parametrize("text", [None, "frame,y,x\n0,1,2\n"])
+def test_bad_log_of_edits_is_one_sentence_status_2_and_nothing_written(
+    hologyre: Any, stack_file: Path, tmp_path: Path, text: str | None
+) -> None:
+    log = tmp_path / "ada.jsonl"
+    if text is not None:
+        log.write_text(text, encoding="utf-8")
+    before = tree(tmp_path)
+    done = hologyre("run", stack_file, "--out", tmp_path / "out", "--annotations", log)
+    assert done.status == 2
+    assert done.err.startswith(f"hologyre: {log}")
+    assert done.err.count("\n") == 1
+    assert tree(tmp_path) == before
+
+
+def test_annotations_take_one_stack(hologyre: Any, stack_file: Path, tmp_path: Path) -> None:
+    options = ("--out", tmp_path / "out", "--annotations", tmp_path / "ada.jsonl")
+    done = hologyre("run", stack_file, stack_file, *options)
+    assert done.status == 2
+    assert "--annotations: a log of edits is of one stack, and 2 are given" in done.err
+    assert not (tmp_path / "out").exists()
 
 
 def test_recipe_command_writes_what_run_then_uses(

@@ -6,6 +6,8 @@ from pathlib import Path
 import pytest
 
 from hologyre import tables
+from hologyre.edits import NAME
+from hologyre.results.folder import FILES, FOUND
 
 ROOT = Path(__file__).parents[1]
 PAGES = sorted([ROOT / "README.md", ROOT / "DEVELOPERS.md", *(ROOT / "docs").rglob("*.md")])
@@ -25,6 +27,13 @@ def test_every_column_is_described_as_the_code_describes_it(name, columns):
     section = page.split(f"### {name}\n")[1].split("\n#")[0]
     rows = re.findall(r"^\| `(\w+)` \| (.+) \|$", section, re.MULTILINE)
     assert rows == [(column.name, column.meaning) for column in columns]
+
+
+def test_every_file_of_a_result_folder_is_described():
+    page = (ROOT / "docs" / "files.md").read_text(encoding="utf-8")
+    section = page.split("## The result folder\n")[1].split("\n#")[0]
+    rows = re.findall(r"^\| `([\w./]+)` \|", section, re.MULTILINE)
+    assert sorted(rows) == sorted([*FILES, NAME, f"{FOUND}/"])
 
 
 @pytest.mark.parametrize("page", PAGES, ids=lambda page: page.name)

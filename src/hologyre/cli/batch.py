@@ -40,6 +40,7 @@ class Options:
     workers: int
     scheduler: str | None
     keep_fields: bool
+    annotations: Path | None = None
 
 
 def run_all(
@@ -107,6 +108,7 @@ def _run(
             stack,
             folder,
             recipe,
+            annotations=options.annotations,
             existing=options.existing,
             workers=options.workers,
             client=client,

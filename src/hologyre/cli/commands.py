@@ -147,6 +147,13 @@ def run_stacks(
     scheduler: Annotated[
         str | None, typer.Option(metavar="ADDRESS", help="Compute on this dask scheduler instead.")
     ] = None,
+    annotations: Annotated[
+        Path | None,
+        typer.Option(
+            metavar="FILE",
+            help="Log of edits by hand (edits.jsonl) to replay on what is found; for one stack.",
+        ),
+    ] = None,
     keep_fields: Annotated[
         bool, typer.Option("--keep-fields", help="Write the complex fields as fields.zarr.")
     ] = False,
@@ -159,6 +166,11 @@ def run_stacks(
         raise UsageFault("--replace and --resume exclude each other; give one of them.")
     if scheduler is not None and workers is not None:
         raise UsageFault("--workers and --scheduler exclude each other; give one of them.")
+    if annotations is not None and len(stacks) > 1:
+        raise UsageFault(
+            f"--annotations: a log of edits is of one stack, and {len(stacks)} are given; run each "
+            "with its own."
+        )
     settings = _load(recipe)
     if frames is not None:
         settings = (settings or Recipe()).with_settings({"stack.frames": frames})
@@ -167,6 +179,7 @@ def run_stacks(
         workers=workers or _cores(),
         scheduler=scheduler,
         keep_fields=keep_fields,
+        annotations=annotations,
     )
     raise typer.Exit(run_all(stacks, out, settings, options))
 

@@ -17,12 +17,13 @@ def complain(sentence: str) -> None:
 
 
 def is_expected(error: ValueError) -> bool:
-    """Tell whether an error speaks of the input, the recipe or the output folder."""
+    """Tell whether an error speaks of the input, the recipe, a log or the output folder."""
     from hologyre.analyse import ClusterError
+    from hologyre.edits import LogError
     from hologyre.recipe import RecipeError
     from hologyre.results import OutputError
     from hologyre.stacks import StackError
     from hologyre.survey import SurveyError
 
-    kinds = UsageFault | RecipeError | OutputError | StackError | SurveyError | ClusterError
-    return isinstance(error, kinds)
+    inputs = RecipeError | LogError | StackError | SurveyError
+    return isinstance(error, inputs | UsageFault | OutputError | ClusterError)

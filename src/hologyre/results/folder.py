@@ -14,6 +14,9 @@ from hologyre.results.files import OutputError
 from hologyre.results.store import NAME, FrameStore, Job
 
 TABLES = ("trajectories.csv", "singularities.csv", "events.csv", "frames.csv")
+FOUND = "found"
+"""Subfolder of the tables without the edits by hand, where a run replays some."""
+
 FILES = (*TABLES, "recipe.toml", "overview.png", "fields.zarr", "run.json")
 
 Existing = Literal["refuse", "replace", "resume"]
@@ -55,8 +58,10 @@ def check_free(folder: Path, existing: Existing) -> None:
     )
 
 
-def enter(folder: Path, job: Job, existing: Existing) -> FrameStore:
+def enter(folder: Path, job: Job, existing: Existing, annotated: str | None = None) -> FrameStore:
     """Return the store of frames to work with: what is there for this job, or a new one.
+
+    Frames do not depend on edits by hand: a run may be resumed with others.
 
     Raises
     ------
@@ -83,10 +88,11 @@ def enter(folder: Path, job: Job, existing: Existing) -> FrameStore:
                 f"{job.version}; begin anew by --replace."
             )
         return store
-    if existing == "resume" and finished(folder, job) is None and read_run(folder) is not None:
+    done = finished(folder, job, annotated)
+    if existing == "resume" and done is None and read_run(folder) is not None:
         raise OutputError(
-            f"{folder}: holds the finished results of other images or another recipe; write over "
-            "them by --replace or choose another folder by --out."
+            f"{folder}: holds the finished results of other images or another recipe, or with "
+            "other edits by hand; write over them by --replace or choose another folder by --out."
         )
     # from here on the folder does not hold a finished run
     (folder / "run.json").unlink(missing_ok=True)
@@ -94,8 +100,16 @@ def enter(folder: Path, job: Job, existing: Existing) -> FrameStore:
     return FrameStore.begin(store.folder, job)
 
 
-def finished(folder: Path, job: Job) -> dict[str, Any] | None:
-    """Return the folder's run.json if it holds the finished results of this very job."""
+def finished(folder: Path, job: Job, annotated: str | None = None) -> dict[str, Any] | None:
+    """Return the folder's run.json if it holds the finished results of this very job.
+
+    Parameters
+    ----------
+    folder : Path
+    job : Job
+    annotated : str, optional
+        Checksum of the log of edits that is replayed.
+    """
     run = read_run(folder)
     if run is None or run["status"] != "done" or (folder / NAME).exists():
         return None
@@ -104,7 +118,8 @@ def finished(folder: Path, job: Job) -> dict[str, Any] | None:
     except OSError:
         return None
     same = Job(run["input"]["checksum"], recipe, run["hologyre"]) == job
-    return run if same else None
+    replayed = (run.get("annotations") or {}).get("checksum")
+    return run if same and replayed == annotated else None
 
 
 def _difference(before: str, now: str) -> str:

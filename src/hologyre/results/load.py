@@ -8,11 +8,28 @@ from typing import Any
 
 import pandas as pd
 
+from hologyre.edits import NAME as LOG
 from hologyre.recipe import Recipe, load_recipe
 from hologyre.results.fields import KeptFields, read_fields
 from hologyre.results.files import OutputError, read_csv
-from hologyre.results.folder import read_run
+from hologyre.results.folder import FOUND, read_run
 from hologyre.tables import EVENTS, FRAMES, SINGULARITIES, TRAJECTORIES
+
+
+@dataclass(frozen=True, eq=False)
+class AsFound:
+    """The tables without edits by hand.
+
+    Parameters
+    ----------
+    singularities, trajectories, events, frames : DataFrame
+        Columns as in `hologyre.tables`.
+    """
+
+    singularities: pd.DataFrame
+    trajectories: pd.DataFrame
+    events: pd.DataFrame
+    frames: pd.DataFrame
 
 
 @dataclass(frozen=True, eq=False)
@@ -28,6 +45,11 @@ class Result:
         Content of run.json.
     singularities, trajectories, events, frames : DataFrame
         Columns as in `hologyre.tables`.
+    as_found : AsFound
+        The tables without edits by hand, for `hologyre.edits.found_of`; the same ones where
+        none were replayed.
+    annotations : Path or None
+        The log of the edits that were replayed.
     fields : sequence of Field, or None
         Lazy; None unless they were kept.
     """
@@ -39,6 +61,8 @@ class Result:
     trajectories: pd.DataFrame
     events: pd.DataFrame
     frames: pd.DataFrame
+    as_found: AsFound
+    annotations: Path | None
     fields: KeptFields | None
 
 
@@ -58,13 +82,26 @@ def load_result(folder: str | Path) -> Result:
         )
     names = {name: folder / written for name, written in run["files"].items()}
     kept = names.get("fields.zarr")
+    tables = _read_tables(names)
+    replayed = f"{FOUND}/singularities.csv" in names
     return Result(
         folder,
         load_recipe(names["recipe.toml"]),
         run,
-        read_csv(names["singularities.csv"], SINGULARITIES),
-        read_csv(names["trajectories.csv"], TRAJECTORIES),
-        read_csv(names["events.csv"], EVENTS),
-        read_csv(names["frames.csv"], FRAMES),
+        tables.singularities,
+        tables.trajectories,
+        tables.events,
+        tables.frames,
+        _read_tables(names, f"{FOUND}/") if replayed else tables,
+        names.get(LOG),
         None if kept is None else read_fields(kept),
+    )
+
+
+def _read_tables(names: dict[str, Path], where: str = "") -> AsFound:
+    return AsFound(
+        read_csv(names[f"{where}singularities.csv"], SINGULARITIES),
+        read_csv(names[f"{where}trajectories.csv"], TRAJECTORIES),
+        read_csv(names[f"{where}events.csv"], EVENTS),
+        read_csv(names[f"{where}frames.csv"], FRAMES),
     )

@@ -25,20 +25,27 @@ from hologyre.analyse import (
     link,
     plan,
 )
+from hologyre.edits import NAME as LOG
 from hologyre.recipe import Recipe, recipe_text
-from hologyre.results.fields import write_fields
-from hologyre.results.files import csv_bytes, require_writable, write_whole
+from hologyre.results.annotations import (
+    about,
+    check_log,
+    correct,
+    drop_found,
+    read_annotations,
+    remarks,
+)
+from hologyre.results.files import require_writable, write_whole
 from hologyre.results.folder import Existing, check_free, enter, finished
 from hologyre.results.store import FrameStore, Job, StoredFields
+from hologyre.results.writing import Draw, write_found, write_results
 from hologyre.stacks import fingerprint
 from hologyre.survey import SurveyError, survey
-from hologyre.tables import EVENTS, FRAMES, SINGULARITIES, TRAJECTORIES
 
 if TYPE_CHECKING:
     from distributed import Client
 
 Progress = Callable[[int, int], None]
-Draw = Callable[[Analysis], bytes]
 Status = Literal["done", "interrupted"]
 
 _PACKAGES = ("numpy", "scipy", "numba", "pandas", "tifffile", "dask")
@@ -83,6 +90,7 @@ def run(
     folder: str | Path,
     recipe: Recipe | None = None,
     *,
+    annotations: str | Path | None = None,
     existing: Existing = "refuse",
     workers: int = 1,
     client: Client | None = None,
@@ -104,6 +112,9 @@ def run(
         Made if missing.
     recipe : Recipe, optional
         What it leaves "auto", or all, is surveyed.
+    annotations : path, optional
+        Log of edits by hand. They are replayed on what is found, as a viewer session does; the
+        tables as found are kept too, in the subfolder ``found``, and so is the log.
     existing : "refuse", "replace" or "resume"
         What to do about a run that is in the folder already.
     workers, client
@@ -122,39 +133,53 @@ def run(
     Raises
     ------
     OutputError
-        If the folder cannot be written or holds another run.
+        If the folder cannot be written, holds another run, or holds other edits by hand.
+    LogError
+        If the log of edits cannot be read. Nothing is written then.
     SurveyError, RecipeError, StackError
         If the input cannot be used. Nothing is written then.
     """
     began = time.perf_counter()
     folder = Path(folder)
+    by_hand = None if annotations is None else read_annotations(annotations)
     check_free(folder, existing)
+    log_before = None if by_hand is None else check_log(folder, by_hand)
     planned = plan(stack, survey(stack, recipe))
     job = Job(
         fingerprint(stack.attrs["paths"]), recipe_text(planned.recipe), metadata.version("hologyre")
     )
-    kept = finished(folder, job) if existing == "resume" else None
+    annotated = None if by_hand is None else by_hand.checksum
+    kept = finished(folder, job, annotated) if existing == "resume" else None
     if kept is not None and (not keep_fields or "fields.zarr" in kept["files"]):
         return _recall(folder, kept)
     require_writable(folder)
-    store = enter(folder, job, existing)
+    store = enter(folder, job, existing, annotated)
     surveyed = time.perf_counter()
     status = _measure(planned, store, workers, client, progress)
     if status == "interrupted" and not store.frames():
         _leave(folder, store)
         raise KeyboardInterrupt
     measured = time.perf_counter()
-    analysis = _collect(planned, store)
-    if not analysis.fields and status == "done":
+    found = _collect(planned, store)
+    if not found.fields and status == "done":
         _leave(folder, store)
-        reason = analysis.frames["reason"].value_counts().index[0]
+        reason = found.frames["reason"].value_counts().index[0]
         raise SurveyError(
-            f"{stack.attrs['name']}: none of its {len(analysis.frames)} frames could be used "
+            f"{stack.attrs['name']}: none of its {len(found.frames)} frames could be used "
             f"({reason}); check the recording and the recipe's carrier."
         )
+    analysis, told, replayed = found, _unused_log(folder), None
+    if by_hand is not None:
+        analysis, corrected = correct(found, by_hand.log)
+        told, replayed = remarks(by_hand.log, corrected), about(by_hand, corrected)
     linked = time.perf_counter()
-    warnings = _warnings(planned, analysis, status)
-    files, moved = _write(folder, analysis, keep_fields, draw)
+    warnings = (*_warnings(planned, analysis, status), *told)
+    files, moved = write_results(folder, analysis, keep_fields, draw)
+    if by_hand is not None:
+        more, aside = write_found(folder, found, by_hand, log_before)
+        files, moved = files | more, moved + aside
+    else:
+        drop_found(folder)
     written = time.perf_counter()
     seconds = {
         "survey": surveyed - began,
@@ -163,8 +188,8 @@ def run(
         "writing": written - linked,
     }
     summary = _summary(folder, analysis, status, (*warnings, *moved), files)
-    about = _about(summary, job, planned, seconds)
-    files["run.json"] = write_whole(folder / "run.json", about)
+    described = _about(summary, job, planned, replayed, seconds)
+    files["run.json"] = write_whole(folder / "run.json", described)
     if status == "done":
         store.remove()
     return summary
@@ -260,30 +285,10 @@ def _frames(numbers: list[int]) -> str:
     return f"Frames {shown}" + (f" and {len(numbers) - 5} more" if len(numbers) > 5 else "")
 
 
-def _write(
-    folder: Path, analysis: Analysis, keep_fields: bool, draw: Draw | None
-) -> tuple[dict[str, Path], list[str]]:
-    """Write all but run.json; tell where each file went and which had to be moved aside."""
-    contents: dict[str, bytes] = {
-        "recipe.toml": recipe_text(analysis.recipe).encode(),
-        "singularities.csv": csv_bytes(analysis.singularities, SINGULARITIES),
-        "trajectories.csv": csv_bytes(analysis.trajectories, TRAJECTORIES),
-        "events.csv": csv_bytes(analysis.events, EVENTS),
-        "frames.csv": csv_bytes(analysis.frames, FRAMES),
-    }
-    if draw is not None and analysis.fields:
-        contents["overview.png"] = draw(analysis)
-    files = {name: write_whole(folder / name, content) for name, content in contents.items()}
-    moved = [
-        f"{name} is open in another program; it was written as {path.name}."
-        for name, path in files.items()
-        if path.name != name
-    ]
-    if keep_fields and analysis.fields:
-        files["fields.zarr"] = write_fields(
-            folder / "fields.zarr", analysis.fields, analysis.measured
-        )
-    return files, moved
+def _unused_log(folder: Path) -> tuple[str, ...]:
+    if not (folder / LOG).is_file():
+        return ()
+    return (f"The edits by hand in {LOG} are not in the tables; replay them by --annotations.",)
 
 
 def _summary(
@@ -318,9 +323,15 @@ def _recall(folder: Path, kept: dict[str, Any]) -> RunSummary:
     )
 
 
-def _about(summary: RunSummary, job: Job, planned: Plan, seconds: dict[str, float]) -> bytes:
+def _about(
+    summary: RunSummary,
+    job: Job,
+    planned: Plan,
+    replayed: dict[str, Any] | None,
+    seconds: dict[str, float],
+) -> bytes:
     counts = ("frames", "done", "skipped", "singularities", "tracks", "events")
-    about = {
+    told = {
         "status": summary.status,
         "hologyre": job.version,
         "versions": {
@@ -335,9 +346,13 @@ def _about(summary: RunSummary, job: Job, planned: Plan, seconds: dict[str, floa
             "shape": list(planned.stack.shape),
             "dtype": str(planned.stack.dtype),
         },
+        "annotations": replayed,
         "counts": {name: getattr(summary, name) for name in counts},
-        "files": {name: path.name for name, path in summary.files.items()},
+        "files": {
+            name: path.relative_to(summary.folder).as_posix()
+            for name, path in summary.files.items()
+        },
         "seconds": {name: round(value, 3) for name, value in seconds.items()},
         "warnings": list(summary.warnings),
     }
-    return (json.dumps(about, indent=2, ensure_ascii=False) + "\n").encode()
+    return (json.dumps(told, indent=2, ensure_ascii=False) + "\n").encode()
