@@ -8,6 +8,7 @@ from typing import Any, Literal
 import numpy as np
 from numpy.typing import ArrayLike, NDArray
 
+from hologyre.fields.remarks import WEAK, remarks
 from hologyre.fields.saturation import usable_pixels
 from hologyre.fields.sidebands import Sideband, Spectrum, find_sidebands, half_way
 from hologyre.fields.tone import fit_tone
@@ -16,8 +17,6 @@ from hologyre.fields.whittle import fit_disc
 _SMALLEST = 32
 _SEARCHED = 1024
 """Side of the part of a frame in whose spectrum sidebands are searched for."""
-_WEAK = 0.15
-"""Visibility under which fringes are called weak."""
 _FAINT = 0.01
 _NEARLY_ALL = 0.99
 _SKIRT = 1.15
@@ -128,7 +127,7 @@ def find_carrier(
     spectrum = Spectrum.of(_middle(counts))
     bands = [b for b in find_sidebands(spectrum, most=3) if spectrum.visibility(b.power) > _FAINT]
     if bands and _meets_its_conjugate(bands[0]):
-        if spectrum.visibility(bands[0].power) > _WEAK:
+        if spectrum.visibility(bands[0].power) > WEAK:
             reason = (
                 "the fringes lie at Nyquist, 2 px each, where both sidebands meet: tilt the "
                 "reference beam less or magnify more"
@@ -235,7 +234,11 @@ def _refined(
         found = _as_fringes(frame, counts, spectrum, top, radius)
     else:
         found = _as_speckle(counts, spectrum, band, radius)
-    found = replace(found, notes=_notes(found, frame))
+    usable = usable_pixels(frame)
+    saturated = 0.0 if usable is None else 1 - float(usable.mean())
+    place = (found.fy, found.fx)
+    notes = remarks(place, found.radius, found.visibility, saturated, found.kind == "speckle")
+    found = replace(found, notes=notes)
     own_half = found.fx + found.fy / 2 > 0
     return found if own_half != conjugate else found.conjugate
 
@@ -328,39 +331,6 @@ def _fringe_radius(spectrum: Spectrum, fy: float, fx: float) -> float:
     mean = np.bincount(ring[inside], weights=spectrum.power[inside]) / np.maximum(count, 1)
     above = np.flatnonzero(mean > 2 * floor)
     return float(np.clip((above[-1] + 1) * step if above.size else least, least, most))
-
-
-def _notes(carrier: Carrier, frame: NDArray[Any]) -> tuple[str, ...]:
-    """Say what is wrong with the fringes, and what to do about it."""
-    notes = []
-    f, r = carrier.frequency, carrier.radius
-    highest = max(abs(carrier.fy), abs(carrier.fx))
-    if f <= 3 * r and carrier.kind == "speckle":
-        notes.append(
-            f"the sideband (radius {r:.3f} cycles/px) overlaps the zero order: the carrier of "
-            f"{f:.3f} cycles/px must exceed three radii, {3 * r:.3f}; tilt the reference more, "
-            "magnify more or close the aperture"
-        )
-    if highest + r > 0.5:
-        notes.append(
-            f"the sideband is clipped at Nyquist (0.5 cycles/px): it reaches {highest + r:.3f}; "
-            "tilt the reference less, magnify more or close the aperture"
-        )
-    elif highest > 0.45:
-        notes.append(
-            f"the fringes are barely sampled, {1 / f:.1f} px each: they may be finer than they "
-            "seem (undersampled); tilt the reference less and see whether they get coarser"
-        )
-    if carrier.visibility < _WEAK:
-        notes.append(
-            f"the fringes are weak (visibility {carrier.visibility:.2f}): balance the beams, "
-            "check polarisation and path difference"
-        )
-    usable = usable_pixels(frame)
-    lost = 0.0 if usable is None else 1 - float(usable.mean())
-    if lost > 1e-4:
-        notes.append(f"{lost:.2%} of the pixels are saturated: shorten the exposure")
-    return tuple(notes)
 
 
 def _meets_its_conjugate(band: Sideband) -> bool:
