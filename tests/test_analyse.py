@@ -23,10 +23,13 @@ from hologyre.analyse import (
     inspect,
     iter_frames,
     plan,
+    unwrap_field,
 )
+from hologyre.edits import Barrier, Bridge, Region, barriers, bridges, used_pixels
 from hologyre.fields.interpolate import evaluate, on_pixels
 from hologyre.fields.refocus import refocus
 from hologyre.motion import Motion
+from hologyre.phase.edges import edges_along
 from hologyre.recipe import Recipe, RecipeError
 from hologyre.simulate.camera import Camera, record
 from hologyre.simulate.random_waves import RandomWaves
@@ -147,6 +150,40 @@ def test_fields_phase_and_unwrapped_are_lazy_and_agree(analysis: Analysis) -> No
     turns = (unwrapped[2].values - phase[2].values) / (2 * np.pi)
     np.testing.assert_allclose(turns, np.round(turns), atol=1e-5)
     assert len(analysis.fields[1:3]) == 2
+
+
+def test_unwrapping_keeps_to_pixels_that_are_used(analysis: Analysis) -> None:
+    field, settings = analysis.fields[2], analysis.recipe.phase
+    half = Region(frame=2, where=((-1, -1), (-1, 63.5), (128, 63.5), (128, -1)), use="leave out")
+    used = used_pixels([half], 2, (128, 128))
+    phase = unwrap_field(field, settings, used=used).phase
+    assert np.isnan(phase[:, :64]).all()
+    turns = (phase - np.angle(on_pixels(field)))[:, 64:] / (2 * np.pi)
+    np.testing.assert_allclose(turns, np.round(turns), atol=1e-5)
+
+
+def test_no_cut_crosses_a_bridge_and_cuts_along_barriers_are_free(analysis: Analysis) -> None:
+    field, settings = analysis.fields[2], analysis.recipe.phase
+    free = unwrap_field(field, settings)
+    cut = max(free.cuts.polylines, key=len)
+    bridge = Bridge(frame=2, where=(tuple(cut[0] - 0.25), tuple(cut[-1] + 0.25)))
+    drawn = [bridge, Barrier(frame=2, where=tuple(map(tuple, cut)))]
+    bridged = unwrap_field(field, settings, bridges=bridges(drawn, 2))
+    barred = unwrap_field(field, settings, barriers=barriers(drawn, 2))
+    crossed = edges_along(bridges(drawn, 2)[0], (128, 128))
+    assert not bridged.cuts.jump_y[crossed.y].any()
+    assert not bridged.cuts.jump_x[crossed.x].any()
+    assert free.cuts.jump_y[crossed.y].any() or free.cuts.jump_x[crossed.x].any()
+    # edges are all that the cost is made of: those of the longest cut are free now
+    assert barred.cost < free.cost < bridged.cost
+
+
+def test_pixels_used_are_checked(analysis: Analysis) -> None:
+    field, settings = analysis.fields[2], analysis.recipe.phase
+    with pytest.raises(ValueError, match=r"used: expected shape \(128, 128\), got \(4, 4\)"):
+        unwrap_field(field, settings, used=np.ones((4, 4), np.bool_))
+    with pytest.raises(ValueError, match="used: expected at least one pixel"):
+        unwrap_field(field, settings, used=np.zeros((128, 128), np.bool_))
 
 
 def test_phase_lies_above_minus_pi(analysis: Analysis) -> None:

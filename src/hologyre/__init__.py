@@ -12,6 +12,18 @@ from typing import TYPE_CHECKING, Any
 
 if TYPE_CHECKING:
     from hologyre.analyse import Analysis, FrameResult, analyse, iter_frames
+    from hologyre.edits import (
+        Agreement,
+        Log,
+        LogError,
+        compare,
+        found_of,
+        load_log,
+        replay,
+        review,
+        snap,
+    )
+    from hologyre.fields.autofocus import Focus, autofocus
     from hologyre.fields.blanks import Blanks
     from hologyre.fields.carrier import Carrier, NoFringes, find_carrier
     from hologyre.fields.compensate import Compensated, compensate
@@ -28,19 +40,33 @@ if TYPE_CHECKING:
     from hologyre.recipe import Recipe, RecipeError, load_recipe, save_recipe
     from hologyre.results import OutputError, load_result
     from hologyre.singularities.locate import locate_singularities
+    from hologyre.singularities.statistics import measure_density, measure_neighbours
+    from hologyre.singularities.statistics_fields import measure_spectrum
+    from hologyre.singularities.statistics_pairs import measure_charge_variance, measure_pairs
+    from hologyre.singularities.theory import (
+        charge_correlation,
+        charge_variance,
+        pair_correlation,
+        zero_density,
+    )
+    from hologyre.singularities.theory_spectrum import Spectrum
     from hologyre.stacks import StackError, open_stack
     from hologyre.survey import SurveyError, survey
 
 __version__ = "0.1.0"
 
 _HOMES = {
+    "Agreement": "hologyre.edits",
     "Analysis": "hologyre.analyse",
     "Blanks": "hologyre.fields.blanks",
     "Carrier": "hologyre.fields.carrier",
     "Compensated": "hologyre.fields.compensate",
     "Field": "hologyre.grid",
+    "Focus": "hologyre.fields.autofocus",
     "FrameResult": "hologyre.analyse",
     "Grid": "hologyre.grid",
+    "Log": "hologyre.edits",
+    "LogError": "hologyre.edits",
     "Motion": "hologyre.motion",
     "NoFringes": "hologyre.fields.carrier",
     "NoiseMap": "hologyre.fields.noise",
@@ -48,12 +74,17 @@ _HOMES = {
     "OutputError": "hologyre.results",
     "Recipe": "hologyre.recipe",
     "RecipeError": "hologyre.recipe",
+    "Spectrum": "hologyre.singularities.theory_spectrum",
     "StackError": "hologyre.stacks",
     "SurveyError": "hologyre.survey",
     "Unwrapped": "hologyre.phase.unwrap",
     "Window": "hologyre.grid",
     "analyse": "hologyre.analyse",
     "audit": "hologyre.motion",
+    "autofocus": "hologyre.fields.autofocus",
+    "charge_correlation": "hologyre.singularities.theory",
+    "charge_variance": "hologyre.singularities.theory",
+    "compare": "hologyre.edits",
     "compensate": "hologyre.fields.compensate",
     "current": "hologyre.fields.wavevector",
     "demodulate": "hologyre.fields.demodulate",
@@ -61,30 +92,46 @@ _HOMES = {
     "field_noise": "hologyre.fields.noise",
     "find_carrier": "hologyre.fields.carrier",
     "follow_threads": "hologyre.motion",
+    "found_of": "hologyre.edits",
     "iter_frames": "hologyre.analyse",
     "link_singularities": "hologyre.motion",
+    "load_log": "hologyre.edits",
     "load_recipe": "hologyre.recipe",
     "load_result": "hologyre.results",
     "local_wavevector": "hologyre.fields.wavevector",
     "locate_singularities": "hologyre.singularities.locate",
+    "measure_charge_variance": "hologyre.singularities.statistics_pairs",
+    "measure_density": "hologyre.singularities.statistics",
+    "measure_neighbours": "hologyre.singularities.statistics",
+    "measure_pairs": "hologyre.singularities.statistics_pairs",
+    "measure_spectrum": "hologyre.singularities.statistics_fields",
     "on_pixels": "hologyre.fields.interpolate",
     "open_stack": "hologyre.stacks",
-    "resample": "hologyre.fields.interpolate",
+    "pair_correlation": "hologyre.singularities.theory",
     "refocus": "hologyre.fields.refocus",
+    "replay": "hologyre.edits",
+    "resample": "hologyre.fields.interpolate",
     "residues": "hologyre.phase.residues",
+    "review": "hologyre.edits",
     "save_recipe": "hologyre.recipe",
+    "snap": "hologyre.edits",
     "survey": "hologyre.survey",
     "unwrap": "hologyre.phase.unwrap",
+    "zero_density": "hologyre.singularities.theory",
 }
 
 __all__ = [
+    "Agreement",
     "Analysis",
     "Blanks",
     "Carrier",
     "Compensated",
     "Field",
+    "Focus",
     "FrameResult",
     "Grid",
+    "Log",
+    "LogError",
     "Motion",
     "NoFringes",
     "NoiseMap",
@@ -92,12 +139,17 @@ __all__ = [
     "OutputError",
     "Recipe",
     "RecipeError",
+    "Spectrum",
     "StackError",
     "SurveyError",
     "Unwrapped",
     "Window",
     "analyse",
     "audit",
+    "autofocus",
+    "charge_correlation",
+    "charge_variance",
+    "compare",
     "compensate",
     "current",
     "demodulate",
@@ -105,20 +157,32 @@ __all__ = [
     "field_noise",
     "find_carrier",
     "follow_threads",
+    "found_of",
     "iter_frames",
     "link_singularities",
+    "load_log",
     "load_recipe",
     "load_result",
     "local_wavevector",
     "locate_singularities",
+    "measure_charge_variance",
+    "measure_density",
+    "measure_neighbours",
+    "measure_pairs",
+    "measure_spectrum",
     "on_pixels",
     "open_stack",
+    "pair_correlation",
     "refocus",
+    "replay",
     "resample",
     "residues",
+    "review",
     "save_recipe",
+    "snap",
     "survey",
     "unwrap",
+    "zero_density",
 ]
 
 

@@ -185,14 +185,58 @@ def wrapped_phase(field: Field) -> NDArray[np.float32]:
     return phase
 
 
-def unwrap_field(field: Field, settings: PhaseSettings) -> Unwrapped:
-    """Unwrap a field's phase on the hologram's pixels as a recipe says."""
+def unwrap_field(
+    field: Field,
+    settings: PhaseSettings,
+    *,
+    barriers: Sequence[NDArray[np.floating]] | None = None,
+    bridges: Sequence[NDArray[np.floating]] | None = None,
+    used: NDArray[np.bool_] | None = None,
+) -> Unwrapped:
+    """Unwrap a field's phase on the hologram's pixels as a recipe says.
+
+    Parameters
+    ----------
+    field : Field
+        One frame.
+    settings : PhaseSettings
+    barriers, bridges : sequence of (n, 2) float arrays, optional
+        Lines (y_px, x_px) along which cuts cost nothing, or that no cut may cross, as
+        `hologyre.edits.barriers` and `hologyre.edits.bridges` give them.
+    used : (y, x) bool array, optional
+        Pixels to use, as `hologyre.edits.used_pixels` gives them; all without it.
+
+    Returns
+    -------
+    Unwrapped
+        NaN where the field is not valid and where pixels are not used.
+
+    Raises
+    ------
+    ValueError
+        If `used` is not of the frame's shape or leaves no pixel, or a line has fewer than two
+        vertices.
+    ShutInError
+        If bridges leave a residue no way out. It is a ValueError.
+    """
     phase, valid = wrapped_phase(field), _valid_pixels(field)
+    if used is not None:
+        if used.shape != valid.shape:
+            raise ValueError(f"used: expected shape {valid.shape}, got {used.shape}")
+        valid &= used
+        if not valid.any():
+            raise ValueError("used: expected at least one pixel of the field's valid part")
     weight = None
     if settings.weight == "amplitude":
         amplitude = np.abs(on_pixels(field))
         weight = np.where(valid, amplitude / amplitude[valid].max(), 0)
-    return unwrap(phase, weight=weight, valid=None if valid.all() else valid)
+    return unwrap(
+        phase,
+        weight=weight,
+        valid=None if valid.all() else valid,
+        barriers=barriers,
+        bridges=bridges,
+    )
 
 
 def _valid_pixels(field: Field) -> NDArray[np.bool_]:
