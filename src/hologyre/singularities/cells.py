@@ -246,12 +246,13 @@ def judge(fine, bend_y, bend_x, coarse):  # type: ignore[no-untyped-def]
 
 
 @numba.njit(cache=True, nogil=True)
-def judge_parts(fine, det, bow, coarse, verdicts):  # type: ignore[no-untyped-def]
+def judge_parts(fine, det, size, bend, coarse, verdicts):  # type: ignore[no-untyped-def]
     """Tell for every quarter of a cut part what `judge` tells for a cell, from det J.
 
-    `bow` is how far the field may be from a quarter's bilinear patch. Fills `verdicts` (4, 4)
-    with 0, 1, -1 or 2.
+    `size` is the part's side, `bend` the sum of the second differences over a whole step,
+    `coarse` what the samples err by over it. Fills `verdicts` (4, 4) with 0, 1, -1 or 2.
     """
+    bow = (BEND_SLACK / 8.0 * (size / PARTS) ** 2 + coarse) * bend
     ripple = 0.0
     for v in range(PARTS + 1):
         for u in range(1, PARTS):

@@ -15,7 +15,7 @@ from hologyre.singularities.lattice import lattice_of
 from hologyre.singularities.robustness import robustness
 from hologyre.singularities.search import find_zeros
 from hologyre.singularities.trust import noise_share, trust, trust_of_higher
-from hologyre.singularities.winding import bends, lattice_turns
+from hologyre.singularities.winding import bends, cell_turns, dark_cells, lattice_turns
 from hologyre.tables import SINGULARITIES, conform, empty
 
 
@@ -62,11 +62,11 @@ def locate_singularities(
         return empty(SINGULARITIES)
     planes, table = lattice.planes, lattice.table
     bend = bends(planes)
-    turns_y, turns_x = lattice_turns(planes, table, bend)
+    turns = cell_turns(*lattice_turns(planes, table, bend))
     doubt = doubtful(planes, bend)
-    zeros, turns = find_zeros(
-        planes, table, lattice.coarse, bend, turns_y, turns_x, doubt, lattice.floor
-    )
+    dark = dark_cells(planes, lattice.floor)
+    turns[dark], doubt[dark] = 0, False
+    zeros = find_zeros(planes, table, bend, turns, doubt, lattice.coarse, lattice.floor)
     if zeros.shape[0] == 0:
         return empty(SINGULARITIES)
     variance = _variance_at(noise, *lattice.to_px(zeros[:, 0], zeros[:, 1]))
@@ -79,11 +79,9 @@ def locate_singularities(
     chosen = np.flatnonzero(kept[vortices.first] & lattice.window.contains(y_px, x_px))
     chosen = chosen[np.lexsort((x_px[chosen], y_px[chosen]))]
     first, charge = vortices.first[chosen], vortices.charge[chosen]
-    slopes, level, variance = zeros[first, 2:6], tree.level[first], variance[first]
-    core = cores(
-        (slopes[:, 0] + 1j * slopes[:, 1]) / lattice.step_px[0],
-        (slopes[:, 2] + 1j * slopes[:, 3]) / lattice.step_px[1],
-    )
+    slopes, level, variance = zeros[first, 2:6].copy(), tree.level[first], variance[first]
+    slopes_px = slopes.view(np.complex128) / lattice.step_px
+    core = cores(slopes_px[:, 0], slopes_px[:, 1])
     var_y, var_x, cov = core.covariance(variance)
     sure = trust(
         level, core.steep, core.flat, variance, noise_share(lattice, bend), lattice.radius_per_px

@@ -9,6 +9,7 @@ from __future__ import annotations
 
 import numba
 import numpy as np
+from numpy.typing import NDArray
 
 from hologyre.singularities.kernel import HALO, scratch, value_at
 
@@ -152,6 +153,19 @@ def lattice_turns(planes, table, bend):  # type: ignore[no-untyped-def]
                         work,
                     )
     return along_y, along_x
+
+
+def cell_turns(turns_y: NDArray[np.int8], turns_x: NDArray[np.int8]) -> NDArray[np.int8]:
+    """Return the winding of every cell from the turns along its edges."""
+    return turns_x[:-1] + turns_y[:, 1:] - turns_x[1:] - turns_y[:, :-1]
+
+
+def dark_cells(planes: NDArray[np.float64], floor: float) -> NDArray[np.bool_]:
+    """Tell the cells at all of whose corners the field is below `floor`, the arithmetic's error."""
+    inner = planes[:, HALO:-HALO, HALO:-HALO]
+    dark = np.maximum(np.abs(inner[0]), np.abs(inner[1])) <= floor
+    cells: NDArray[np.bool_] = dark[:-1, :-1] & dark[:-1, 1:] & dark[1:, :-1] & dark[1:, 1:]
+    return cells
 
 
 @numba.njit(cache=True, nogil=True)
