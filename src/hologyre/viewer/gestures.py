@@ -5,7 +5,7 @@ from __future__ import annotations
 from collections.abc import Callable, Iterable, Iterator
 from contextlib import contextmanager
 from dataclasses import dataclass, replace
-from typing import Any
+from typing import TYPE_CHECKING, Any
 
 import numpy as np
 import pandas as pd
@@ -44,6 +44,9 @@ from hologyre.viewer.review_points import (
 from hologyre.viewer.session import Session
 from hologyre.viewer.styles import Role
 
+if TYPE_CHECKING:
+    from hologyre.viewer.review_deeds import Review
+
 LINES: tuple[Role, ...] = ("barriers", "bridges", "analysed", "left_out")
 _AREAS: tuple[Role, ...] = ("analysed", "left_out")
 UNDO, REDO = "Control-Z", "Control-Shift-Z"
@@ -73,6 +76,7 @@ class Gestures:
         self.session = session
         self.every_frame = False
         self.question: Question | None = None
+        self.review: Review | None = None
         self._display = display
         self._keys: dict[str, Callable[[], object]] = {UNDO: self.undo, REDO: self.redo}
         self._rows: pd.DataFrame | None = None
@@ -349,9 +353,12 @@ class Gestures:
             self.draw()
 
     def _follow_tables(self) -> None:
-        if self.reviewing:
-            self._display.hide("singularities")
-        self.draw()
+        if not self.reviewing:
+            return
+        self._display.hide("singularities")
+        # most often the same rows come back, while a point or a line may be in the hand
+        if self._rows is None or not self._rows.equals(self.session.editing.frame(self._frame)):
+            self.draw()
 
     def _step(self, step: Callable[[], Applied | Misfit | NothingToStep], word: str) -> None:
         self.commit()

@@ -17,7 +17,7 @@ from hologyre.viewer.opening import show_stack
 from hologyre.viewer.session import Session, Tables
 
 PLUGIN = "hologyre"
-DOCKS = ("Stack", "Field", "Phase", "Singularities", "Motion")
+DOCKS = ("Stack", "Field", "Phase", "Singularities", "Motion", "Review")
 OVERVIEW = "All docks"
 
 _TABS = "QTabBar::tab { padding: 4px; min-width: 0px; font-size: 11px; }"

@@ -55,7 +55,8 @@ def draw_points(layer: Points, table: pd.DataFrame) -> None:
     chosen = set(selected_ids(layer))
     charge = table["charge"].to_numpy()
     layer.selected_data = set()
-    layer.data = table[["y_px", "x_px"]].to_numpy(dtype=np.float64)
+    # pandas lends its values to be read only, and napari drags points in place
+    layer.data = np.array(table[["y_px", "x_px"]], dtype=np.float64)
     layer.features = table[["singularity", "charge", "track", "trust", "origin"]].reset_index(
         drop=True
     )

@@ -127,7 +127,7 @@ STYLES: dict[Role, Style] = {
     "review": Style(
         "singularities under review",
         "points",
-        {"border_color": _OUTLINE, "border_width": 0.1, "size": 9.0, "opacity": 1.0},
+        {"border_color": _OUTLINE, "border_width": 0.1, "size": 6.0, "opacity": 1.0},
     ),
 }
 

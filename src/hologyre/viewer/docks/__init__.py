@@ -1,1 +1,1 @@
-"""The docks, in the order of the work: Stack, Field, Phase, Singularities, Motion."""
+"""The docks, in the order of the work: Stack, Field, Phase, Singularities, Motion, Review."""

@@ -94,6 +94,9 @@ def _finding(name: str, session: Session) -> str:
         if tables.found_with is None:
             return f"{told}, not all frames searched"
         return told + ("" if steps.singularities_are_current(session) else "; settings changed")
+    if name == "Review":
+        count = len(session.editing.log.standing)
+        return f"{count} edits by hand" if count else "nothing edited by hand"
     if tables.linked_with is None:
         return "not followed yet"
     told = f"{tables.trajectories['track'].nunique()} trajectories, {len(tables.events)} events"
