@@ -183,7 +183,7 @@ def bench_compensation_of_speckle():
         field = wave.on_grid(np.arange(n) * 1.0, np.arange(n) * 1.0, 0.0) * np.exp(1j * phase)
         camera = Camera(full_well_e=1e4, visibility=0.8, carrier_per_px=(0.26, 0.25))
         hologram = set_up(camera, field, seed=seed).record(field)
-        read = demodulate(hologram, Carrier(0.26, 0.25, 0.105))
+        read = demodulate(hologram, Carrier(0.26, 0.25, 0.115))
         rough = compensate(read, family="polynomial", order=2)
         fine = compensate(read, family="polynomial", order=2, method="likelihood")
         bound = np.linalg.norm(fine.sigma * surface.values(y, x).std(axis=(1, 2)))
