@@ -194,7 +194,7 @@ def test_counts_of_the_summary_are_those_of_the_corrected_tables(annotated: RunS
 
 
 def test_edits_against_the_winding_are_told(annotated: RunSummary) -> None:
-    told = "1 edit contradicts the measured winding; see the column audit of frames.csv."
+    told = "1 edit contradicts the measured winding (number 1); why is told in edits.jsonl."
     assert told in annotated.warnings
     audit = load_result(annotated.folder).frames.set_index("frame")["audit"]
     assert audit[2].endswith("edit 1 by hand against the winding")

@@ -14,6 +14,8 @@ from hologyre.motion import Motion
 from hologyre.results.files import OutputError, write_whole
 from hologyre.results.folder import FOUND, TABLES, read_run
 
+_MOST_NAMED = 5
+
 
 @dataclass(frozen=True, eq=False)
 class Annotations:
@@ -78,10 +80,14 @@ def remarks(log: Log, corrected: Corrected) -> tuple[str, ...]:
     """Return what the user should know of a replay, a sentence each."""
     told = [*log.warnings]
     told += [f"Edit {m.number} ({m.edit.kind}): {m.reason}" for m in corrected.misfits]
-    against = corrected.contradictions["edit"].nunique()
+    against = corrected.contradictions["edit"].unique().tolist()
     if against:
-        subject = "1 edit contradicts" if against == 1 else f"{against} edits contradict"
-        told.append(f"{subject} the measured winding; see the column audit of frames.csv.")
+        subject = "1 edit contradicts" if len(against) == 1 else f"{len(against)} edits contradict"
+        named = ", ".join(map(str, against[:_MOST_NAMED]))
+        more = ", ..." if len(against) > _MOST_NAMED else ""
+        told.append(
+            f"{subject} the measured winding (number {named}{more}); why is told in {NAME}."
+        )
     return tuple(told)
 
 
