@@ -74,7 +74,7 @@ def cheapest_flow(
     ny, nx = charge.shape[0] + 1, charge.shape[1] + 1
     if earth is None:
         earth = np.broadcast_to(np.bool_(False), charge.shape)
-    nodes = np.empty((ny + 1, nx + 1, 4), np.int32)
+    nodes = np.empty((ny + 1, nx + 1, 3), np.int32)
     _lay_out(nodes, nodes.view(np.int16), charge, cost_y, cost_x, earth)
     charged = _charged(charge, earth)
     excess = np.zeros(nodes.shape[:2], np.int32)
@@ -86,8 +86,8 @@ def cheapest_flow(
     typical = max(float(cost_x[:: max(1, ny // 64)].mean()), 0.0)
     reach = 1 + int(0.4 * typical * np.sqrt(charge.size / max(len(charged), 1)))
     stuck = _solve(
-        nodes.reshape(-1, 4),
-        nodes.reshape(-1, 4).view(np.int16),
+        nodes.reshape(-1, 3),
+        nodes.reshape(-1, 3).view(np.int16),
         excess.ravel(),
         charged,
         nx + 1,
@@ -106,12 +106,13 @@ def _charged(charge: NDArray[np.integer], earth: NDArray[np.bool_]) -> NDArray[n
     return (j + 1) * (charge.shape[1] + 2) + i + 1
 
 
-# One record of 16 bytes a node, so that a search touches few lines of memory:
-#   nodes[n, 0]     4 * potential + kind; the earth has the bits of both signs, so that one
-#                   test finds the goals of a search
-#   nodes[n, 1]     4 * distance + direction it was reached by, or _UNSEEN
-#   arcs[n, 4 + k]  (the same memory as int16) 4 * cost of the arc in direction k, + 1 when
-#                   flow leaves by it, + 2 when flow comes in by it; -1 when forbidden
+# One record of 12 bytes a node, so that a search touches few lines of memory:
+#   nodes[n, 0]   4 * potential + kind; the earth has the bits of both signs, so that one test
+#                 finds the goals of a search
+#   nodes[n, 1]   4 * distance + direction it was reached by, or _UNSEEN
+#   arcs[n, 4]    (the same memory as int16) the arc to the right: 4 * cost, + 1 when flow runs
+#                 to the right, + 2 when it runs to the left; -1 when forbidden
+#   arcs[n, 5]    the arc down, likewise
 # Directions: 0 right, 1 left, 2 down, 3 up. Node (J, I) is plaquette (J - 1, I - 1); the rim
 # around them is earth. Indices are unsigned in the inner loop: numba checks signed ones for
 # being negative.
@@ -128,8 +129,7 @@ def _lay_out(
     nodes[0, :, 0] = nodes[-1, :, 0] = _EARTH
     nodes[:, 0, 0] = nodes[:, -1, 0] = _EARTH
     nodes[:, :, 1] = _UNSEEN
-    arcs[0, :, 4:] = arcs[-1, :, 4:] = -1
-    arcs[:, 0, 4:] = arcs[:, -1, 4:] = -1
+    arcs[:, :, 4:] = -1
     for j in range(1, height - 1):
         for i in range(1, width - 1):
             kind = _PLAIN
@@ -138,10 +138,12 @@ def _lay_out(
             elif charge[j - 1, i - 1] != 0:
                 kind = _POSITIVE if charge[j - 1, i - 1] > 0 else _NEGATIVE
             nodes[j, i, 0] = kind
+    for j in range(1, height - 1):
+        for i in range(width - 1):
             arcs[j, i, 4] = max(4 * cost_y[j - 1, i], -1)
-            arcs[j, i, 5] = max(4 * cost_y[j - 1, i - 1], -1)
-            arcs[j, i, 6] = max(4 * cost_x[j, i - 1], -1)
-            arcs[j, i, 7] = max(4 * cost_x[j - 1, i - 1], -1)
+    for j in range(height - 1):
+        for i in range(1, width - 1):
+            arcs[j, i, 5] = max(4 * cost_x[j, i - 1], -1)
 
 
 @njit(cache=True, nogil=True)
@@ -214,7 +216,7 @@ def _search(
     none), its distance (or the reach) and how many entries of the pool were used.
     """
     mask = np.uint64(head.size - 1)
-    inflow = np.int32(1 if sign > 0 else 0)
+    against = np.int32(1 if sign > 0 else 0)
     wanted = np.int32(_NEGATIVE if sign > 0 else _POSITIVE)
     sense = np.int32(sign)
     room = np.uint64(pool.shape[0] - 4)
@@ -243,13 +245,14 @@ def _search(
             break
         here = np.int32(distance - sense * (nodes[node, 0] >> 2))
         for k in range(4):
-            code = np.int32(arcs[node, np.uint64(4 + k)])
+            there = node + step[np.uint64(k)]
+            low = there if k & 1 else node
+            code = np.int32(arcs[low, np.uint64(4 + (k >> 1))])
             if code < 0:
                 continue
             cost = np.int32(code >> 2)
-            if (code >> inflow) & 1:
+            if (code >> (against ^ (k & 1))) & 1:
                 cost = np.int32(-cost)
-            there = node + step[np.uint64(k)]
             word = nodes[there, 0]
             reached = np.int32(here + cost + sense * (word >> 2))
             if reached < min(limit, nodes[there, 1] >> 2):
@@ -320,8 +323,6 @@ def _push(
         else:
             jump_x[j, i - 1] += unit
             amount = jump_x[j, i - 1]
-        right = 4 if k < 2 else 6
-        code = max(arcs[low, right], arcs[low + stride, right + 1]) & ~3
-        arcs[low, right] = code + (amount > 0) + 2 * (amount < 0)
-        arcs[low + stride, right + 1] = code + 2 * (amount > 0) + (amount < 0)
+        arc = 4 if k < 2 else 5
+        arcs[low, arc] = (arcs[low, arc] & ~3) + (amount > 0) + 2 * (amount < 0)
         node = before

@@ -39,7 +39,7 @@ def fit_smooth(
     *,
     weight: NDArray[np.floating] | None = None,
     valid: NDArray[np.bool_] | None = None,
-    tolerance: float = 1e-6,
+    tolerance: float = 1e-5,
     max_iterations: int = 500,
 ) -> LeastSquares:
     """Fit a phase without jumps to wrapped differences, by least squares.
