@@ -4,6 +4,7 @@ from __future__ import annotations
 
 import numpy as np
 import pytest
+from skimage import data
 
 from hologyre.phase.unwrap import unwrap
 
@@ -130,3 +131,20 @@ def test_regions_shut_off_by_cuts_are_told_from_components():
     assert set(np.unique(regions)) == {1, 2}
     assert (regions == 2).sum() == 8 * 8
     assert (unwrap(phase).regions() == 1).all()
+
+
+# Disparities of a real scene, in a general package: edges of objects and holes behind them.
+def test_a_scene_with_occlusions_and_holes_is_cut_at_less_than_the_truth(wrapped):
+    truth = data.stereo_motorcycle()[2].astype(float)
+    valid = np.isfinite(truth)
+    filled = np.where(valid, truth, 0.0)
+    phase = wrapped(filled)
+    result = unwrap(phase, valid=valid)
+    assert result.certificate.proves(result.cuts.jump_y, result.cuts.jump_x)
+    turns = (result.phase - phase)[valid] / (2 * np.pi)
+    np.testing.assert_allclose(turns, np.rint(turns), atol=1e-12)
+    true_jumps = 0.0
+    for axis, both in ((0, valid[1:] & valid[:-1]), (1, valid[:, 1:] & valid[:, :-1])):
+        step = np.diff(filled, axis=axis)
+        true_jumps += np.abs(np.rint((step - wrapped(step)) / (2 * np.pi)))[both].sum()
+    assert 0 < result.cost < true_jumps
