@@ -220,7 +220,9 @@ class Gestures:
             if steps is not None:
                 found = last_steps(editing.frame, frame)
                 start = found[["y0_px", "x0_px"]].to_numpy()
-                steps.data = np.stack([start, found[["y_px", "x_px"]].to_numpy() - start], axis=1)
+                ways = np.stack([start, found[["y_px", "x_px"]].to_numpy() - start], axis=1)
+                if not np.array_equal(steps.data, ways):
+                    steps.data = ways
             for role in LINES:
                 layer = display.layer(role)
                 if layer is not None:

@@ -24,7 +24,7 @@ class ItemModel(QAbstractTableModel):
 
     def show_items(self, items: pd.DataFrame) -> None:
         """Show other items, or the same with other marks."""
-        if len(items) == len(self._items):
+        if 0 < len(items) == len(self._items):
             self._items = items
             last = self.index(len(items) - 1, len(_COLUMNS) - 1)
             self.dataChanged.emit(self.index(0, 0), last)

@@ -40,6 +40,8 @@ if TYPE_CHECKING:
 
 Told = TypeVar("Told", bound=Applied | Misfit | NothingToStep)
 
+_KEEP_FRAMES = 16
+
 _FARTHEST = 50
 """Frames looked through for the neighbour of a singularity in its track."""
 
@@ -70,6 +72,7 @@ class Editing:
         self._laid_out: Found | None = None
         self._corrections: Corrections | None = None
         self._tables: Tables | None = None
+        self._frames: dict[int, pd.DataFrame] = {}
         self._place = default_folder(stack) / NAME if stack.attrs.get("home") else None
         if self._place is not None and self._place.is_file():
             try:
@@ -86,6 +89,7 @@ class Editing:
     def found(self, found: Tables) -> None:
         self._found = found
         self._laid_out = self._corrections = self._tables = None
+        self._frames.clear()
 
     @property
     def tables(self) -> Tables:
@@ -181,7 +185,11 @@ class Editing:
         """Return one frame's singularities as they are now, with their `track`."""
         if self.corrections is None:
             return empty(SINGULARITIES).assign(track=pd.Series(dtype="int64"))
-        return self.corrections.frame(frame)
+        if frame not in self._frames:
+            if len(self._frames) >= _KEEP_FRAMES:
+                self._frames.clear()
+            self._frames[frame] = self.corrections.frame(frame)
+        return self._frames[frame]
 
     @property
     def drawn_lines(self) -> tuple[Edit, ...]:
@@ -224,11 +232,14 @@ class Editing:
 
     def _renew(self) -> None:
         self._corrections = self._tables = None
+        self._frames.clear()
         self.changed.emit(None)
 
     def _told(self, done: Told) -> Told:
         if isinstance(done, Applied):
             self._tables = None
+            for frame in done.frames:
+                self._frames.pop(frame, None)
             self.changed.emit(done.frames)
         return done
 

@@ -51,24 +51,31 @@ def changed_points(drawn: pd.DataFrame, data: NDArray[Any], ids: Sequence[int]) 
 
 
 def draw_points(layer: Points, table: pd.DataFrame) -> None:
-    """Show a frame's singularities in a layer, those selected still selected."""
+    """Show a frame's singularities in a layer, those selected still selected.
+
+    Where the layer shows them already, nothing is drawn; else it is drawn once.
+    """
+    features = table[["singularity", "charge", "track", "trust", "origin"]].reset_index(drop=True)
+    # pandas lends its values to be read only, and napari drags points in place
+    place = np.array(table[["y_px", "x_px"]], dtype=np.float64)
+    if layer.features.equals(features) and np.array_equal(layer.data, place):
+        return
     chosen = set(selected_ids(layer))
     charge = table["charge"].to_numpy()
     layer.selected_data = set()
-    # pandas lends its values to be read only, and napari drags points in place
-    layer.data = np.array(table[["y_px", "x_px"]], dtype=np.float64)
-    layer.features = table[["singularity", "charge", "track", "trust", "origin"]].reset_index(
-        drop=True
-    )
-    layer.feature_defaults = {
-        "singularity": -1, "charge": 0, "track": -1, "trust": np.nan, "origin": "placed",
-    }  # fmt: skip
-    if len(table):
-        colours = np.array([_rgba(NEGATIVE), _rgba(POSITIVE)])
-        layer.face_color = colours[(charge > 0).astype(np.intp)]
-        layer.symbol = np.where(charge > 0, _SYMBOLS[1], _SYMBOLS[-1])
-        if chosen:
-            layer.selected_data = set(np.flatnonzero(table["singularity"].isin(chosen)).tolist())
+    with layer.events.blocker_all():
+        layer.data = place
+        layer.features = features
+        layer.feature_defaults = {
+            "singularity": -1, "charge": 0, "track": -1, "trust": np.nan, "origin": "placed",
+        }  # fmt: skip
+        if len(table):
+            colours = np.array([_rgba(NEGATIVE), _rgba(POSITIVE)])
+            layer.face_color = colours[(charge > 0).astype(np.intp)]
+            layer.symbol = np.where(charge > 0, _SYMBOLS[1], _SYMBOLS[-1])
+    layer.refresh()
+    if chosen:
+        layer.selected_data = set(np.flatnonzero(table["singularity"].isin(chosen)).tolist())
 
 
 def selected_ids(layer: Points) -> list[int]:
