@@ -10,6 +10,7 @@ from typing import TYPE_CHECKING, Any
 
 import xarray as xr
 from numpy.typing import ArrayLike
+from threadpoolctl import threadpool_limits
 
 from hologyre.analyse.frame import FrameResult, measure
 from hologyre.analyse.planning import Plan, plan
@@ -68,7 +69,8 @@ def iter_frames(
     work = partial(measure, planned)
     if client is not None:
         return _on_cluster(work, wanted, client)
-    return _in_threads(work, wanted, workers) if workers > 1 else _in_turn(work, wanted)
+    results = _in_threads(work, wanted, workers) if workers > 1 else _in_turn(work, wanted)
+    return _on_one_thread_each(results)
 
 
 class ClusterError(ValueError):
@@ -97,6 +99,12 @@ def connect(address: str) -> Client:
             f"{address}: no dask scheduler answers at this address ({error}); give it as "
             "tcp://host:port."
         ) from error
+
+
+def _on_one_thread_each(results: FrameResults) -> FrameResults:
+    # threads of the linear algebra inside threads by frame get in each other's way
+    with threadpool_limits(1, user_api="blas"):
+        yield from results
 
 
 def _in_turn(work: Callable[[int], FrameResult], frames: Sequence[int]) -> FrameResults:
