@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Sequence
+from collections.abc import Callable, Sequence
 from dataclasses import dataclass
 
 import numpy as np
@@ -37,10 +37,12 @@ class Panel:
 class PanelPlot(QWidget):
     """Shows panels over a common axis, and a marker that follows where the viewer stands.
 
-    A click or drag emits `picked` with the place on the horizontal axis.
+    A click or drag emits `picked` with the place on the horizontal axis, and `chosen` with the
+    last one at release.
     """
 
     picked = Signal(float)
+    chosen = Signal(float)
 
     def __init__(self, axis: str, parent: QWidget | None = None) -> None:
         super().__init__(parent)
@@ -81,12 +83,18 @@ class PanelPlot(QWidget):
 
     def mousePressEvent(self, event: QMouseEvent) -> None:
         """Tell the place that was clicked."""
-        self._tell(event)
+        if event.button() == Qt.MouseButton.LeftButton:
+            self._tell(event, self.picked.emit)
 
     def mouseMoveEvent(self, event: QMouseEvent) -> None:
         """Tell the place that is dragged to."""
         if event.buttons() & Qt.MouseButton.LeftButton:
-            self._tell(event)
+            self._tell(event, self.picked.emit)
+
+    def mouseReleaseEvent(self, event: QMouseEvent) -> None:
+        """Tell the place where a drag ends."""
+        if event.button() == Qt.MouseButton.LeftButton:
+            self._tell(event, self.chosen.emit)
 
     def paintEvent(self, event: QPaintEvent) -> None:
         """Draw the panels, or the note."""
@@ -150,11 +158,11 @@ class PanelPlot(QWidget):
         first, last = _range(places, from_zero=False)
         return first, last
 
-    def _tell(self, event: QMouseEvent) -> None:
+    def _tell(self, event: QMouseEvent, emit: Callable[[float], object]) -> None:
         if self._panels:
             box, (first, last) = self._box(0), self._span()
             share = (event.position().x() - box.left()) / box.width()
-            self.picked.emit(first + float(np.clip(share, 0, 1)) * (last - first))
+            emit(first + float(np.clip(share, 0, 1)) * (last - first))
 
 
 def _draw_curve(

@@ -10,19 +10,28 @@ import numpy as np
 from napari import Viewer
 from qtpy.QtCore import QTimer
 from qtpy.QtGui import QShowEvent
-from qtpy.QtWidgets import QLabel
+from qtpy.QtWidgets import QCheckBox, QFormLayout, QLabel, QWidget
 
 from hologyre.analyse import Inspection
-from hologyre.recipe import RecipeError
+from hologyre.fields.autofocus import Focus
+from hologyre.recipe import Recipe, RecipeError
 from hologyre.viewer import steps
 from hologyre.viewer.ahead import Ahead
 from hologyre.viewer.docks.base import WARN, SessionDock, button, side_by_side, titled
+from hologyre.viewer.editors import ChoiceEditor, NumberEditor
+from hologyre.viewer.focusing import focus_frame, focus_panel
 from hologyre.viewer.forms import RecipeForm, section_paths
 from hologyre.viewer.maps import Skipped
+from hologyre.viewer.plots import PanelPlot
+from hologyre.viewer.preview import TIP, PreviewLayer, preview_phase
 from hologyre.viewer.session import Session
 from hologyre.viewer.spectrum import Band, SpectrumView
 
 _REST_MS = 250
+_FOCUS_TIP = (
+    "Refocus the current frame over the range, plot how sharp it is, and put the best distance "
+    "into the settings, for all frames."
+)
 _LABELS = {
     "carrier.fy": "Carrier fy (cycles/px)",
     "carrier.fx": "Carrier fx (cycles/px)",
@@ -30,8 +39,15 @@ _LABELS = {
     "carrier.conjugate": "Read the other sideband",
     "field.edges": "Frame edges",
     "field.window": "Band filter",
+    "compensation.family": "Take out",
+    "compensation.order": "Highest order",
     "refocus.distance_um": "Refocus by",
 }
+_MEASURES = {
+    "modulus": "mean modulus",
+    "tamura": "Tamura coefficient",
+}
+_KINDS = {"phase": "phase object", "amplitude": "amplitude object"}
 
 
 class FieldDock(SessionDock):
@@ -50,7 +66,16 @@ class FieldDock(SessionDock):
         self.told = QLabel()
         self.told.setWordWrap(True)
         self._carrier = RecipeForm(section_paths("carrier"), labels=_LABELS)
-        self._field = RecipeForm(section_paths("field", "refocus"), labels=_LABELS)
+        self._field = RecipeForm(section_paths("field"), labels=_LABELS)
+        self._compensation = RecipeForm(section_paths("compensation"), labels=_LABELS)
+        self._refocus = RecipeForm(section_paths("refocus"), labels=_LABELS)
+        self._forms = (self._carrier, self._field, self._compensation, self._refocus)
+        self.focus_range = NumberEditor(count=2)
+        self.focus_range.show_value((-50.0, 50.0))
+        self._range_um = (-50.0, 50.0)
+        self.focus_measure = ChoiceEditor(list(_MEASURES), list(_MEASURES.values()))
+        self.focus_kind = ChoiceEditor(list(_KINDS), list(_KINDS.values()))
+        self.focus_plot = PanelPlot("distance (µm)")
         self._ahead = Ahead(self._show_spectrum)
         super().__init__(napari_viewer)
 
@@ -61,8 +86,13 @@ class FieldDock(SessionDock):
 
     def show_session(self, session: Session) -> None:
         """Show the spectrum of the current frame, the carrier and the settings."""
-        for form in (self._carrier, self._field):
+        for form in self._forms:
             form.show_recipe(session.recipe)
+        reason = _no_refocus(session)
+        self.focus_button.setEnabled(not reason)
+        self.focus_button.setToolTip(f"Not now: {reason}." if reason else _FOCUS_TIP)
+        if self.focus_plot.panels:
+            self.focus_plot.show_marker(session.recipe.refocus.distance_um)
         self._ask_spectrum()
 
     def run(self, session: Session) -> None:
@@ -84,23 +114,51 @@ class FieldDock(SessionDock):
             "Draw the local wavevector (gradient of the phase) of the current frame as arrows.",
             lambda: self.with_session(lambda s: steps.show_pictures(s, "wavevectors")),
         )
+        self.live = QCheckBox("Preview while dragging")
+        self.live.setChecked(True)
+        self.live.setToolTip(TIP)
+        self.focus_button = button("Autofocus this frame", _FOCUS_TIP, self._focus)
         for part in (
             self._spectrum,
+            self.live,
             self.told,
             side_by_side(self.find_button, arrows),
             titled("Carrier and band", self._carrier),
             titled("Field", self._field),
+            titled("Compensation", self._compensation),
+            titled("Refocusing", self._refocus, self._focusing()),
         ):
             self.rows.addWidget(part)
         self.rows.addStretch(1)
-        for form in (self._carrier, self._field):
+        for form in self._forms:
             form.changed.connect(self.set_recipe)
             form.refused.connect(lambda reason: self.say(reason, warning=True))
-        self._spectrum.band_moved.connect(lambda band: self.told.setText(words_for(band)))
+        self._spectrum.band_moved.connect(self._move_band)
         self._spectrum.band_chosen.connect(self._choose_band)
+        self.focus_range.chosen.connect(self._set_range)
+        self.focus_plot.picked.connect(self._move_distance)
+        self.focus_plot.chosen.connect(self._choose_distance)
         super()._lay_out()
 
+    def _focusing(self) -> QWidget:
+        """Return the controls of the autofocus and its curve."""
+        holder = QWidget()
+        rows = QFormLayout(holder)
+        rows.setContentsMargins(0, 0, 0, 0)
+        rows.setVerticalSpacing(4)
+        rows.addRow("From, to (µm)", self.focus_range)
+        rows.addRow("Sharpness", self.focus_measure)
+        rows.addRow("Object", self.focus_kind)
+        rows.addRow(self.focus_button)
+        rows.addRow(self.focus_plot)
+        self.focus_measure.show_value("modulus")
+        self.focus_kind.show_value("phase")
+        self.focus_plot.show_panels((), "The autofocus curve comes here.")
+        self.focus_plot.setToolTip(f"Drag to choose the distance. {TIP}")
+        return holder
+
     def _attach(self) -> None:
+        self._preview = PreviewLayer(self.viewer)
         self.viewer.dims.events.current_step.connect(self._ask_spectrum)
         super()._attach()
 
@@ -168,6 +226,84 @@ class FieldDock(SessionDock):
             f"{found.visibility:.2f}. " + words_for(Band(found.fy, found.fx, found.radius))
         )
 
+    def _move_band(self, band: Band) -> None:
+        """Say what the band means, and show the phase it gives."""
+        self.told.setText(words_for(band))
+        session = self.session()
+        if session is not None and self.live.isChecked():
+            self._show_preview(session, band, session.recipe.refocus.distance_um)
+
+    def _move_distance(self, distance_um: float) -> None:
+        session = self.session()
+        self.focus_plot.show_marker(distance_um)
+        if session is None or not self.live.isChecked():
+            return
+        band = _band(session)
+        if band is not None:
+            self._show_preview(session, band, distance_um)
+
+    def _choose_distance(self, distance_um: float) -> None:
+        session = self.session()
+        if session is not None:
+            settings = {"refocus.distance_um": float(f"{distance_um:.4g}")}
+            self._settle(session, session.recipe.with_settings(settings))
+
+    def _show_preview(self, session: Session, band: Band, distance_um: float) -> None:
+        maps, window = session.maps, session.recipe.field.window
+        optics = None if _no_refocus(session) else session.optics
+        try:
+            found = preview_phase(
+                maps.hologram(session.frame),
+                band,
+                window=window,
+                distance_um=distance_um,
+                optics=optics,
+            )
+        except ValueError as error:
+            self.say(str(error), warning=True)
+            return
+        self._preview.show(session, found)
+
+    def _settle(self, session: Session, recipe: Recipe) -> None:
+        """Take a recipe, and leave the place to pictures that follow it: the phase if none does."""
+        self.set_recipe(recipe)
+        if self._preview.layer(session) is None:
+            return
+        self._preview.remove(session)
+        display = session.display
+        if display is not None and not display.shows_picture() and session.task is None:
+            steps.show_pictures(session, "phase")
+
+    def _set_range(self, value: Any) -> None:
+        fits = isinstance(value, tuple) and len(value) == 2 and value[0] < value[1]
+        self.focus_range.show_problem(not fits)
+        if fits:
+            self._range_um = (float(value[0]), float(value[1]))
+        else:
+            self.say("Autofocus takes two distances in µm, the smaller one first.", warning=True)
+
+    def _focus(self) -> None:
+        def find(session: Session) -> None:
+            focus_frame(
+                session,
+                self._range_um,
+                measure=self.focus_measure.box.currentData(),
+                kind=self.focus_kind.box.currentData(),
+                on_done=lambda found: self._show_focus(session, found),
+            )
+
+        self.with_session(find)
+
+    def _show_focus(self, session: Session, found: Focus) -> None:
+        distance_um = float(found.distance_um)
+        self.focus_plot.show_panels([focus_panel(found)])
+        self.focus_plot.show_marker(distance_um)
+        if bool(found.at_end):
+            self.say("The best distance is at an end of the range: widen it.", warning=True)
+            return
+        self._choose_distance(distance_um)
+        self.say(f"In focus at {distance_um:.3g} µm.")
+
     def _choose_band(self, band: Band) -> None:
         settings = {
             "carrier.fy": round(band.fy, 5),
@@ -178,10 +314,22 @@ class FieldDock(SessionDock):
         if session is None:
             return
         try:
-            self.set_recipe(session.recipe.with_settings(settings))
+            recipe = session.recipe.with_settings(settings)
         except RecipeError as error:
             self.say(str(error), warning=True)
             self._show_spectrum()
+        else:
+            self._settle(session, recipe)
+
+
+def _no_refocus(session: Session) -> str:
+    """Return why fields cannot be refocused, or nothing."""
+    if session.recipe.undecided():
+        return "find the carrier first"
+    optics = session.optics
+    if optics.wavelength_nm is None or optics.pixel_um is None:
+        return "give the wavelength and the pixel size in the Stack dock first"
+    return ""
 
 
 def words_for(band: Band) -> str:
