@@ -73,7 +73,7 @@ def track_panels(
         length, unit = (1.0, "px") if pixel is None else (pixel, "µm")
         panels.append(
             Panel(
-                f"separation to partner ({unit}): since birth green, until death red",
+                f"separation of pair ({unit}): green from birth, red to death",
                 tuple(Curve(x, y * length, c) for x, y, c in separations),
             )
         )

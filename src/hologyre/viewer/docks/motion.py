@@ -48,7 +48,7 @@ _KINDS = {
     "unexplained": "unexplained ●",
 }
 PREVIOUS_KEY, NEXT_KEY = ",", "."
-_LIST_HEIGHT = 104
+_LIST_HEIGHT = 84
 
 
 class MotionDock(SessionDock):
@@ -178,8 +178,10 @@ class MotionDock(SessionDock):
         )
         for arrow in (self.previous_button, self.next_button):
             arrow.setFixedWidth(30)
+        colour = QLabel("Colour")
+        colour.setSizePolicy(QSizePolicy.Policy.Fixed, QSizePolicy.Policy.Fixed)
         choices = side_by_side(
-            self.previous_button, self.kinds, self.next_button, QLabel("Colour"), self.colours
+            self.previous_button, self.kinds, self.next_button, colour, self.colours
         )
         for part in (
             self.form,
