@@ -140,7 +140,7 @@ def _weak(
 def _links(chain: pd.DataFrame) -> pd.DataFrame:
     chain = chain.sort_values(["track", "frame"], kind="stable")
     joined = (chain["track"] == chain["track"].shift()).to_numpy()
-    span = chain["frame"].diff().to_numpy()
+    span = np.where(joined, chain["frame"].diff().to_numpy(), 1.0)
     step = np.hypot(chain["y_px"].diff(), chain["x_px"].diff()).to_numpy() / span
     usual = float(np.median(step[joined])) if joined.any() else 0.0
     link = chain["link"].to_numpy(dtype=object)

@@ -104,9 +104,10 @@ class State:
             tips: list[Tip] = []
             for name in filter(None, one.tracks.split(";")):
                 head, tail = self.by_track.get(int(name), -1), tails.get(int(name), -1)
-                if tail >= 0 and found.frame[tail] == one.frame_before:
+                # across a gap a track may be seen last before, or first after, the event's frames
+                if tail >= 0 and found.frame[tail] <= one.frame_before:
                     tips.append((tail, "end"))
-                elif head >= 0 and found.frame[head] == one.frame_after:
+                elif head >= 0 and found.frame[head] >= one.frame_after:
                     tips.append((head, "start"))
             self.events[one.event] = Happened(
                 one.kind, one.frame_before, one.frame_after, one.y_px, one.x_px, tuple(tips), source

@@ -11,13 +11,11 @@ import pandas as pd
 import xarray as xr
 from psygnal import Signal
 
-from hologyre.analyse import frame_table
 from hologyre.edits import (
     NAME,
     Applied,
     Barrier,
     Bridge,
-    Corrected,
     Corrections,
     Edit,
     Entry,
@@ -103,7 +101,7 @@ class Editing:
                 singularities=corrected.singularities,
                 trajectories=corrected.trajectories,
                 events=corrected.events,
-                frames=recounted(self._found.frames, corrected),
+                frames=recount(self._found.frames, corrected),
             )
         return self._tables
 
@@ -242,25 +240,6 @@ class Editing:
                 self._frames.pop(frame, None)
             self.changed.emit(done.frames)
         return done
-
-
-def recounted(frames: pd.DataFrame, corrected: Corrected) -> pd.DataFrame:
-    """Return the table of frames counted anew.
-
-    Events that name no track are not audited; without tracks only charges are counted.
-    """
-    events = corrected.events
-    if corrected.trajectories.empty:
-        charge = corrected.singularities.groupby("frame")["charge"]
-        plus, minus = (charge.agg(lambda c, s=s: int((s * c > 0).sum())) for s in (1, -1))
-        known = frames["status"] == "done"
-        counted = frames.assign(
-            positive=frames["frame"].map(plus).fillna(0).where(known, frames["positive"]),
-            negative=frames["frame"].map(minus).fillna(0).where(known, frames["negative"]),
-        )
-        rows = counted.to_dict("records")
-        return frame_table(rows, Motion(corrected.trajectories, events))
-    return recount(frames, replace(corrected, events=events[events["tracks"] != ""]))
 
 
 def _alone(entry: Entry) -> Applied:
