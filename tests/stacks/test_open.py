@@ -10,7 +10,7 @@ import pytest
 import tifffile
 import zarr
 
-from hologyre.stacks import StackError, as_stack, open_stack
+from hologyre.stacks import StackError, as_stack, fingerprint, open_stack
 
 
 @pytest.fixture(autouse=True)
@@ -68,6 +68,16 @@ def test_single_image_is_a_stack_of_one(tmp_path: Path) -> None:
     assert stack.shape == (1, 12, 16)
     assert stack.attrs["name"] == "one"
     assert stack.attrs["paths"] == (str(path),)
+
+
+def test_a_relative_path_is_one_file_with_the_same_fingerprint(
+    tmp_path: Path, monkeypatch: pytest.MonkeyPatch
+) -> None:
+    tifffile.imwrite(tmp_path / "a.ome.tif", frames(3), metadata={"axes": "TYX"})
+    monkeypatch.chdir(tmp_path)
+    near, far = open_stack("a.ome.tif"), open_stack(tmp_path / "a.ome.tif")
+    assert near.attrs["paths"] == ("a.ome.tif",)
+    assert fingerprint(near.attrs["paths"]) == fingerprint(far.attrs["paths"])
 
 
 @pytest.mark.parametrize(

@@ -14,8 +14,9 @@ from qtpy.QtCore import QThreadPool
 from qtpy.QtWidgets import QFileDialog, QMenu
 
 from hologyre.analyse import analyse
+from hologyre.edits import Delete, Log
 from hologyre.recipe import Recipe
-from hologyre.results import OutputError, csv_bytes, run
+from hologyre.results import OutputError, csv_bytes, load_result, run
 from hologyre.stacks import as_stack, open_stack
 from hologyre.survey import survey
 from hologyre.tables import EVENTS, FRAMES, SINGULARITIES, TRAJECTORIES
@@ -273,6 +274,22 @@ def test_a_result_is_loaded_with_its_stack(
     assert {role_of(x) for x in viewer.layers} == {"stack", "phase", "singularities", "tracks"}
     assert session.recipe == session.tables.linked_with
     assert len(session.display.layer("tracks").data) == len(session.tables.trajectories)
+
+
+def test_a_result_with_edits_is_loaded_as_found_with_its_log(
+    make_napari_viewer: Any, stack_file: Path, tmp_path: Path, monkeypatch: pytest.MonkeyPatch
+) -> None:
+    first = load_result(run(open_stack(stack_file), tmp_path / "first").folder)
+    one = first.singularities.iloc[0]
+    where, frame, charge = (one["y_px"], one["x_px"]), int(one["frame"]), int(one["charge"])
+    log = Log(tmp_path / "log.jsonl")
+    log.append(Delete(frame=frame, where=where, charge=charge, reason="dust"))
+    run(open_stack(stack_file), tmp_path / "second", annotations=tmp_path / "log.jsonl")
+    monkeypatch.setattr(launch, "Viewer", make_napari_viewer)
+    session = current_session(launch.view(stack_file, result=tmp_path / "second"))
+    assert len(session.editing.found.singularities) == len(first.singularities)
+    assert len(session.tables.singularities) == len(first.singularities) - 1
+    assert session.editing.log.edits[0].reason == "dust"
 
 
 def test_the_result_of_another_stack_is_refused(

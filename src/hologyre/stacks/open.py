@@ -93,9 +93,9 @@ def _join(files: tuple[Path, ...]) -> tuple[Any, Metadata, int, tuple[Path, ...]
     seen: set[Path] = set()
     for path in files:
         # one file of an OME set stands for all of its files
-        if path not in seen:
+        if path.resolve() not in seen:
             layouts[path] = read_layout(path)
-            seen.update(a.path for a in layouts[path].addresses)
+            seen.update(a.path.resolve() for a in layouts[path].addresses)
     first = layouts[files[0]]
     for path, layout in layouts.items():
         if layout.frame_shape != first.frame_shape:
@@ -112,7 +112,8 @@ def _join(files: tuple[Path, ...]) -> tuple[Any, Metadata, int, tuple[Path, ...]
     addresses = tuple(a for layout in layouts.values() for a in layout.addresses)
     source = FrameFiles(addresses, first.frame_shape, first.file_dtype)
     frames = da.from_array(source, chunks=(1, *first.frame_shape), asarray=False)
-    paths = tuple(dict.fromkeys([*files, *(a.path for a in addresses)]))
+    named = {path.resolve(): path for path in reversed([*files, *(a.path for a in addresses)])}
+    paths = tuple(reversed(named.values()))
     notes = tuple(dict.fromkeys(n for layout in layouts.values() for n in layout.metadata.notes))
     return (
         frames,

@@ -89,11 +89,14 @@ def view(
 
 def _show_result(session: Session, loaded: Result) -> None:
     whole = loaded.recipe if loaded.run["status"] == "done" else None
+    found = loaded.as_found
+    if loaded.annotations is not None and not session.editing.log.standing:
+        session.editing.keep_in(loaded.annotations)
     session.tables = Tables(
-        singularities=loaded.singularities,
-        frames=loaded.frames,
-        trajectories=loaded.trajectories,
-        events=loaded.events,
+        singularities=found.singularities,
+        frames=found.frames,
+        trajectories=found.trajectories,
+        events=found.events,
         found_with=whole,
         linked_with=whole,
     )
