@@ -33,8 +33,8 @@ def _lagrange() -> NDArray[np.float64]:
 
 
 BASIS = _lagrange()
-QUARTERS = np.stack([np.polyval(BASIS, q / PARTS) for q in range(8)], axis=1)
-"""Weights at the quarters, (samples, quarters); eight of them, which makes whole vectors."""
+QUARTERS = np.stack([np.polyval(BASIS, q / PARTS) for q in range(PARTS + 1)])
+"""Weights at the quarters, (quarters, samples)."""
 
 
 def cut_error(band: float) -> float:
@@ -126,21 +126,26 @@ def doubtful(planes, bend):  # type: ignore[no-untyped-def]
 
 @numba.njit(cache=True, nogil=True)
 def cut_cell(planes, j, i, fine):  # type: ignore[no-untyped-def]
-    """Fill the first five columns of `fine` (2, 5, 8) with the field at cell (j, i)'s quarters."""
-    row = np.empty((PARTS + 1, STENCIL))
-    fine[:] = 0.0
+    """Fill `fine` (2, 5, 5) with the field at the quarters of cell (j, i)."""
+    q, c = QUARTERS, i + HALO - FIRST
     for part in range(2):
-        row[:] = 0.0
         for v in range(PARTS + 1):
+            # Written out by sample: sums in registers take half the time of sums in an array.
+            a0 = a1 = a2 = a3 = a4 = a5 = a6 = a7 = 0.0
             for r in range(STENCIL):
-                weight = QUARTERS[r, v]
-                for k in range(STENCIL):
-                    row[v, k] += weight * planes[part, j + HALO - FIRST + r, i + HALO - FIRST + k]
-        for v in range(PARTS + 1):
-            for k in range(STENCIL):
-                weight = row[v, k]
-                for u in range(8):
-                    fine[part, v, u] += weight * QUARTERS[k, u]
+                w, row = q[v, r], planes[part, j + HALO - FIRST + r]
+                a0 += w * row[c]
+                a1 += w * row[c + 1]
+                a2 += w * row[c + 2]
+                a3 += w * row[c + 3]
+                a4 += w * row[c + 4]
+                a5 += w * row[c + 5]
+                a6 += w * row[c + 6]
+                a7 += w * row[c + 7]
+            for u in range(PARTS + 1):
+                left = a0 * q[u, 0] + a1 * q[u, 1] + a2 * q[u, 2] + a3 * q[u, 3]
+                right = a4 * q[u, 4] + a5 * q[u, 5] + a6 * q[u, 6] + a7 * q[u, 7]
+                fine[part, v, u] = left + right
 
 
 @numba.njit(cache=True, nogil=True)

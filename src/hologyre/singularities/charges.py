@@ -5,11 +5,10 @@ from __future__ import annotations
 from math import factorial
 from typing import NamedTuple
 
-import numba
 import numpy as np
 from numpy.typing import NDArray
 
-from hologyre.singularities.kernel import scratch, value_and_slopes, value_at
+from hologyre.singularities.kernel import scratch, value_and_slopes, values_at
 from hologyre.singularities.lattice import Lattice
 
 UNRESOLVED = 2.15
@@ -134,13 +133,3 @@ def centred(
     derivative = variance * k ** (2 * order - 2) / order / 4 ** (order - 1)
     spread = derivative / factorial(order - 1) ** 2 / (order * abs(power)) ** 2
     return y, x, float(np.sqrt(spread / 2))
-
-
-@numba.njit(cache=True, nogil=True)
-def values_at(planes, table, places):  # type: ignore[no-untyped-def]
-    """Return E at places (n, 2) in node coordinates."""
-    out = np.empty(places.shape[0], dtype=np.complex128)
-    work = scratch()
-    for n in range(places.shape[0]):
-        out[n] = value_at(planes, table, places[n, 0], places[n, 1], work)
-    return out

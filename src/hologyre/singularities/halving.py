@@ -28,8 +28,9 @@ def halve(planes, table, bend, squares, floor):  # type: ignore[no-untyped-def]
         The lattice's.
     bend : (4, ny, nx) array
         Second differences at the nodes.
-    squares : (m, 4) array
-        y, x, side, number of the lattice cell; those of one cell one after the other.
+    squares : (m, 5) array
+        y, x, side, number of the lattice cell, sign of det J or 2; those of one cell one after
+        the other.
 
     Returns
     -------
@@ -58,6 +59,17 @@ def halve(planes, table, bend, squares, floor):  # type: ignore[no-untyped-def]
         square[0] = squares[n, :3]
         wind[0] = _turns_around(planes, table, square[0], bend_y, bend_x, work)
         top = 1
+        if squares[n, 4] != 2.0:
+            # One sign: as many zeros as turns.
+            middle = squares[n, :2] + 0.5 * squares[n, 2]
+            if wind[0] == 0:
+                top = 0
+            elif wind[0] == squares[n, 4] and newton(
+                planes, table, square[0], middle[0], middle[1], work, zeros[found]
+            ):
+                zeros[found, 6], zeros[found, 7] = wind[0], 0.0
+                found += 1
+                top = 0
         while top > 0:
             top -= 1
             cut, found = _examine(

@@ -55,17 +55,19 @@ def least_squares(
 @lru_cache(maxsize=32)
 def _designed(band: float) -> tuple[NDArray[np.float64], float]:
     known = np.arange(TAPS, dtype=np.float64) - (HALO - 1.0)
-    place: NDArray[np.float64] = 0.5 + 0.5 * np.cos(np.pi * (np.arange(64) + 0.5) / 64)
-    weights = least_squares(band, known, place, 1e-12)
-    series = np.polynomial.chebyshev.chebfit(2 * place - 1, weights, _DEGREE)
-    table = np.stack([np.polynomial.chebyshev.cheb2poly(c) for c in series.T], axis=1)
-    powers = (2 * place - 1)[:, np.newaxis] ** np.arange(_DEGREE + 1)
+    side: NDArray[np.float64] = np.cos(np.pi * (np.arange(64) + 0.5) / 64)
+    weights = least_squares(band, known, 0.5 + 0.5 * side, 1e-12)
+    # The taps mirror each other about the middle, to rounding; make it exact.
+    weights = (weights + weights[::-1, ::-1]) / 2
+    series = np.polynomial.chebyshev.chebfit(side, weights[:, : TAPS // 2], _DEGREE)
+    table = np.stack([np.polynomial.chebyshev.cheb2poly(c)[::-1] for c in series.T])
     frequency = np.linspace(-band, band, 101)
-    error = np.abs(
-        (powers @ table) @ np.exp(2j * np.pi * np.outer(known, frequency))
-        - np.exp(2j * np.pi * np.outer(place, frequency))
-    )
-    return np.ascontiguousarray(table[::-1]), float(error.max())
+    half = np.stack([np.polyval(row, side) for row in table], axis=1)
+    mirrored = np.stack([np.polyval(row, -side) for row in table[::-1]], axis=1)
+    waves = np.exp(2j * np.pi * np.outer(known, frequency))
+    wanted = np.exp(2j * np.pi * np.outer(0.5 + 0.5 * side, frequency))
+    error = np.abs(np.hstack([half, mirrored]) @ waves - wanted)
+    return np.ascontiguousarray(table), float(error.max())
 
 
 def kernel_table(band: float) -> tuple[NDArray[np.float64], float]:
@@ -78,9 +80,10 @@ def kernel_table(band: float) -> tuple[NDArray[np.float64], float]:
 
     Returns
     -------
-    table : (degree + 1, TAPS) array
-        Coefficients of each tap's weight, highest power of ``2 u - 1`` first, u in [0, 1]
-        being the place between the two samples in the middle.
+    table : (TAPS / 2, degree + 1) array
+        Coefficients of the weights of the first half of the taps, highest power of ``2 u - 1``
+        first, u in [0, 1] being the place between the two samples in the middle. The other
+        half mirrors them.
     error : float
         Largest error of a wave of unit amplitude, along one axis.
     """
@@ -94,15 +97,25 @@ def bands() -> tuple[float, ...]:
 
 @numba.njit(cache=True, nogil=True)
 def _weights(table, u, w):  # type: ignore[no-untyped-def]
-    """Fill the taps' weights and half their derivatives, per sample."""
+    """Fill the taps' weights and half their derivatives, per sample.
+
+    Even and odd powers apart serve a tap and its mirror image at once.
+    """
     s = 2.0 * u - 1.0
-    for k in range(TAPS):
-        w[0, k] = table[0, k]
-        w[1, k] = 0.0
-    for d in range(1, table.shape[0]):
-        for k in range(TAPS):
-            w[1, k] = w[1, k] * s + w[0, k]
-            w[0, k] = w[0, k] * s + table[d, k]
+    square = s * s
+    for k in range(TAPS // 2):
+        row = table[k]
+        odd, even = row[0], row[1]
+        odd_slope = even_slope = 0.0
+        for d in range(2, _DEGREE + 1, 2):
+            odd_slope = odd_slope * square + odd
+            even_slope = even_slope * square + even
+            odd = odd * square + row[d]
+            even = even * square + row[d + 1]
+        value, slope = s * odd, 2.0 * s * even_slope
+        other = odd + 2.0 * square * odd_slope
+        w[0, k], w[0, TAPS - 1 - k] = even + value, even - value
+        w[1, k], w[1, TAPS - 1 - k] = slope + other, slope - other
 
 
 @numba.njit(cache=True, nogil=True)
@@ -115,7 +128,7 @@ def _cell_of(v, count):  # type: ignore[no-untyped-def]
 @numba.njit(cache=True, nogil=True)
 def scratch():  # type: ignore[no-untyped-def]
     """Return the room the evaluations below work in."""
-    return np.empty((4, 2, TAPS))
+    return np.empty((2, 2, TAPS))
 
 
 @numba.njit(cache=True, nogil=True)
@@ -127,29 +140,32 @@ def value_and_slopes(planes, table, y, x, work):  # type: ignore[no-untyped-def]
     """
     j, v = _cell_of(y, planes.shape[1])
     i, u = _cell_of(x, planes.shape[2])
-    wy, wx, along, slope = work[0], work[1], work[2], work[3]
+    wy, wx = work[0], work[1]
     _weights(table, v, wy)
     _weights(table, u, wx)
-    along[:] = 0.0
-    slope[:] = 0.0
-    # Rows are summed side by side, which compiles to vector instructions.
-    for r in range(TAPS):
-        a, b = wy[0, r], wy[1, r]
-        for k in range(TAPS):
-            re, im = planes[0, j + 1 + r, i + 1 + k], planes[1, j + 1 + r, i + 1 + k]
-            along[0, k] += a * re
-            along[1, k] += a * im
-            slope[0, k] += b * re
-            slope[1, k] += b * im
     e_re = e_im = y_re = y_im = x_re = x_im = 0.0
-    for k in range(TAPS):
-        a, b = wx[0, k], wx[1, k]
-        e_re += a * along[0, k]
-        e_im += a * along[1, k]
-        x_re += b * along[0, k]
-        x_im += b * along[1, k]
-        y_re += a * slope[0, k]
-        y_im += a * slope[1, k]
+    for r in range(TAPS):
+        re, im = planes[0, j + 1 + r], planes[1, j + 1 + r]
+        # Two sums at a time do not wait for each other.
+        a_re = a_im = b_re = b_im = c_re = c_im = d_re = d_im = 0.0
+        for k in range(0, TAPS, 2):
+            p, q = re[i + 1 + k], im[i + 1 + k]
+            a_re += wx[0, k] * p
+            a_im += wx[0, k] * q
+            b_re += wx[1, k] * p
+            b_im += wx[1, k] * q
+            p, q = re[i + 2 + k], im[i + 2 + k]
+            c_re += wx[0, k + 1] * p
+            c_im += wx[0, k + 1] * q
+            d_re += wx[1, k + 1] * p
+            d_im += wx[1, k + 1] * q
+        a_re, a_im, b_re, b_im = a_re + c_re, a_im + c_im, b_re + d_re, b_im + d_im
+        e_re += wy[0, r] * a_re
+        e_im += wy[0, r] * a_im
+        x_re += wy[0, r] * b_re
+        x_im += wy[0, r] * b_im
+        y_re += wy[1, r] * a_re
+        y_im += wy[1, r] * a_im
     return (
         complex(e_re, e_im),
         complex(2.0 * y_re, 2.0 * y_im),
@@ -194,3 +210,13 @@ def value_at(planes, table, y, x, work):  # type: ignore[no-untyped-def]
         re += wy[0, r] * row_re
         im += wy[0, r] * row_im
     return complex(re, im)
+
+
+@numba.njit(cache=True, nogil=True)
+def values_at(planes, table, places):  # type: ignore[no-untyped-def]
+    """Return E at places (n, 2) in node coordinates."""
+    out = np.empty(places.shape[0], dtype=np.complex128)
+    work = scratch()
+    for n in range(places.shape[0]):
+        out[n] = value_at(planes, table, places[n, 0], places[n, 1], work)
+    return out

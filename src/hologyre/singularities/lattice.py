@@ -36,7 +36,7 @@ class Lattice:
         Position of node (0, 0) and distance between nodes, hologram pixels.
     window : Window
         Where zeros are wanted, hologram pixels; the nodes cover it.
-    table : (degree + 1, TAPS) array
+    table : (TAPS / 2, degree + 1) array
         The interpolation kernel.
     coarse : float
         What short stencils err by between the nodes, over the second difference.

@@ -136,8 +136,8 @@ def basins(turns, along_y, along_x):  # type: ignore[no-untyped-def]
 
 
 @numba.njit(cache=True, nogil=True)
-def passes(basin, along_y, along_x, most):  # type: ignore[no-untyped-def]
-    """List the edges between different basins whose |E|^2 is at most `most`.
+def passes(basin, along_y, along_x):  # type: ignore[no-untyped-def]
+    """List the edges between different basins.
 
     Returns
     -------
@@ -165,8 +165,6 @@ def passes(basin, along_y, along_x, most):  # type: ignore[no-untyped-def]
                 edge = np.concatenate((edge, np.empty(more, dtype=np.int64)))
                 room += more
             for i in range(columns):
-                if levels[j, i] > most:
-                    continue
                 if axis == 0:
                     p = basin[(j - 1) * nx + i] if j > 0 else 0
                     q = basin[j * nx + i] if j < ny else 0
@@ -208,11 +206,9 @@ def merge(order, level, ends, charge, alike):  # type: ignore[no-untyped-def]
     -------
     end : (basins,) int64 array
         For each charged basin the pass at which its part of {|E| <= r} has no charge, or n + the
-        pass at which it meets the outside; -1 where the passes hold no such.
+        pass at which it meets the outside, as it must in the end; -1 without charge.
     group : (basins,) int32 array
         For each basin a basin it cannot be told apart from, itself as a rule.
-    left : int
-        Charged basins without an end.
     """
     count = charge.size
     parent = np.arange(count).astype(np.int32)
@@ -263,4 +259,4 @@ def merge(order, level, ends, charge, alike):  # type: ignore[no-untyped-def]
             clean[q] = False
     for c in range(count):
         group[c] = _root(group, c)
-    return end, group, left
+    return end, group

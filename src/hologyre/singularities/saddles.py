@@ -6,10 +6,12 @@ import numba
 import numpy as np
 
 from hologyre.singularities.cells import BASIS, FIRST, STENCIL
-from hologyre.singularities.kernel import HALO, scratch, value_and_slopes
+from hologyre.singularities.kernel import HALO, scratch, value_and_slopes, value_at
 
 _REACH = 2.0
 """Steps a saddle may lie from where it is looked for."""
+
+_GOLDEN = (5**0.5 - 1) / 2
 
 
 @numba.njit(cache=True, nogil=True)
@@ -113,35 +115,40 @@ def _towards_saddle(gy, gx, hyy, hxx, hyx):  # type: ignore[no-untyped-def]
 
 
 @numba.njit(cache=True, nogil=True)
-def lowest_on_edges(planes, table, places, along_x):  # type: ignore[no-untyped-def]
-    """Return the least |E| on the lattice edges through these places.
+def lowest_on_lines(planes, table, line, along_x, low, high):  # type: ignore[no-untyped-def]
+    """Return the least |E| on stretches of lattice lines.
 
     Parameters
     ----------
     planes, table
         The lattice's.
-    places : (n, 2) array
-        Where on each edge the search starts, node coordinates.
+    line : (n,) int array
+        Row of each line that goes along x, column of each that goes along y.
     along_x : (n,) bool array
-        Direction of each edge.
+        Direction of each line.
+    low, high : (n,) arrays
+        Where on it each stretch begins and ends, in nodes.
     """
-    out = np.empty(places.shape[0])
+    out = np.empty(line.size)
     work = scratch()
-    for n in range(places.shape[0]):
-        at = places[n].copy()
-        axis = 1 if along_x[n] else 0
-        first = min(np.floor(at[axis]), planes.shape[1 + axis] - 2.0 * HALO - 2.0)
-        out[n] = np.inf
-        for _ in range(12):
-            e, ey, ex = value_and_slopes(planes, table, at[0], at[1], work)
-            out[n] = min(out[n], abs(e))
-            slope = ex if axis == 1 else ey
-            size = slope.real**2 + slope.imag**2
-            if size == 0.0:
-                break
-            # The nearest point of the tangent to zero; exact where the image is straight.
-            step = -(e.real * slope.real + e.imag * slope.imag) / size
-            at[axis] = min(max(at[axis] + step, first), first + 1.0)
-            if abs(step) < 1e-9:
-                break
+    for n in range(line.size):
+        a, b = low[n], high[n]
+        # Golden section, as far as the square root of rounding.
+        for _ in range(40):
+            inner, outer = b - _GOLDEN * (b - a), a + _GOLDEN * (b - a)
+            left = _on_line(planes, table, line[n], along_x[n], inner, work)
+            right = _on_line(planes, table, line[n], along_x[n], outer, work)
+            out[n] = min(left, right)
+            if left < right:
+                b = outer
+            else:
+                a = inner
     return out
+
+
+@numba.njit(cache=True, nogil=True)
+def _on_line(planes, table, line, along_x, at, work):  # type: ignore[no-untyped-def]
+    """Return |E| on a lattice line."""
+    if along_x:
+        return abs(value_at(planes, table, float(line), at, work))
+    return abs(value_at(planes, table, at, float(line), work))

@@ -83,7 +83,7 @@ def _at_sight(planes, table, bend, turns, doubt, coarse):  # type: ignore[no-unt
     zeros, found = np.empty((1024, COLUMNS)), 0
     cells, left = np.empty((256, 2), dtype=np.int64), 0
     work = scratch()
-    fine = np.empty((2, PARTS + 1, 8))
+    fine = np.empty((2, PARTS + 1, PARTS + 1))
     square = np.empty(3)
     for j in range(turns.shape[0]):
         for i in range(turns.shape[1]):
@@ -117,11 +117,12 @@ def _closer(planes, table, bend, turns, cells, coarse):  # type: ignore[no-untyp
     Returns
     -------
     zeros : (n, 9) array
-    squares : (m, 4) array
-        Squares of the cells left that may hold zeros: y, x, side, number of the lattice cell.
+    squares : (m, 5) array
+        Squares of the cells left that may hold zeros: y, x, side, number of the lattice cell,
+        and the sign of det J or 2 where that is not known.
     """
     zeros, found = np.empty((cells.shape[0], COLUMNS)), 0
-    squares, left = np.empty((256, 4)), 0
+    squares, left = np.empty((256, 5)), 0
     work = scratch()
     fine = np.empty((2, PARTS + 1, PARTS + 1))
     det = np.empty((PARTS + 1, PARTS + 1))
@@ -169,6 +170,7 @@ def _closer(planes, table, bend, turns, cells, coarse):  # type: ignore[no-untyp
             if known[k] != 0:
                 squares[left, 0], squares[left, 1] = j + parts[k, 0], i + parts[k, 1]
                 squares[left, 2], squares[left, 3] = parts[k, 2], j * turns.shape[1] + i
+                squares[left, 4] = known[k]
                 left += 1
     return zeros[:found].copy(), squares[:left].copy()
 
