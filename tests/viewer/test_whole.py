@@ -320,7 +320,7 @@ def test_a_sample_opens_at_its_start_in_its_own_micrometres_with_all_docks(
 ) -> None:
     viewer = make_napari_viewer()
     viewer.open_sample("hologyre", "drying-film")
-    assert len(viewer.window.dock_widgets) == 6
+    assert len(viewer.window.dock_widgets) == len((launch.OVERVIEW, *launch.DOCKS))
     session = current_session(viewer)
     assert session.display.frame == 0
     assert session.stack.chunks[0] == (1,) * session.stack.sizes["t"]
