@@ -222,31 +222,39 @@ def _done(table: pd.DataFrame, edits: list[Edit], same_px: float) -> NDArray[np.
     what = table["what"].to_numpy(dtype=object)
     frame = table["frame"].to_numpy()
     place = table[["y_px", "x_px"]].to_numpy(dtype=np.float64)
+    # a close pair has two zeros at one place: only the charge tells them apart
+    charge = np.where(what == "singularity", table["charge"].fillna(0).to_numpy(np.float64), 0.0)
     for kind in ("singularity", "link", "event"):
-        settled = np.array([p for e in edits for p in _settles(e, kind)]).reshape(-1, 3)
+        settled = np.array([p for e in edits for p in _settles(e, kind)]).reshape(-1, 4)
         rows = np.flatnonzero(what == kind)
         if not len(settled) or not len(rows):
             continue
-        # frames lie far apart, so that only places of one frame are near each other
+        # frames and charges lie far apart, so that only places of one kind are near each other
         apart = 1e6 * (same_px + 1.0)
-        tree = cKDTree(settled * [apart, 1.0, 1.0])
-        asked = np.column_stack([apart * frame[rows], place[rows]])
+        tree = cKDTree(settled * [apart, apart, 1.0, 1.0])
+        asked = np.column_stack([apart * frame[rows], apart * charge[rows], place[rows]])
         distance, _ = tree.query(asked, distance_upper_bound=same_px * (1 + 1e-9) + 1e-9)
         done[rows] = np.isfinite(distance)
     return done
 
 
-def _settles(edit: Edit, kind: str) -> list[tuple[float, float, float]]:
-    """Return frame and place of what an edit has settled of a kind."""
+def _settles(edit: Edit, kind: str) -> list[tuple[float, float, float, float]]:
+    """Return frame, charge and place of what an edit has settled of a kind.
+
+    Charges tell singularities apart; links and events have 0.
+    """
     frame = edit.frame
     if frame is None:
         return []
     if isinstance(edit, Confirm):
-        return [(frame, *edit.where)] if edit.what == kind else []
-    if kind == "singularity" and isinstance(edit, Place | FlipCharge):
-        return [(frame, *edit.where)]
+        charge = edit.charge if kind == "singularity" else 0
+        return [(frame, charge, *edit.where)] if edit.what == kind else []
+    if kind == "singularity" and isinstance(edit, Place):
+        return [(frame, edit.charge, *edit.where)]
+    if kind == "singularity" and isinstance(edit, FlipCharge):
+        return [(frame, -edit.charge, *edit.where)]
     if kind == "singularity" and isinstance(edit, Move):
-        return [(frame, *edit.to)]
+        return [(frame, edit.charge, *edit.to)]
     if kind == "link" and isinstance(edit, JoinTracks):
-        return [(edit.later_frame, *edit.where[1])]
+        return [(edit.later_frame, 0, *edit.where[1])]
     return []

@@ -1,12 +1,12 @@
-"""Events whose tracks were not seen in the frames next to them keep their tracks."""
+"""What reviews and replays do with gaps before events and with close pairs."""
 
 from __future__ import annotations
 
 import pandas as pd
 
-from hologyre.edits import found_of, recount, replay, review
+from hologyre.edits import Confirm, found_of, recount, replay, review
 from hologyre.motion import Motion
-from hologyre.tables import EVENTS, FRAMES, SINGULARITIES, TRAJECTORIES, conform
+from hologyre.tables import EVENTS, FRAMES, SINGULARITIES, TRAJECTORIES, conform, empty
 
 
 def unseen_before_its_death() -> tuple[pd.DataFrame, Motion]:
@@ -43,3 +43,15 @@ def test_tables_with_gaps_are_recounted_and_reviewed_without_complaint() -> None
     assert counted["positive"].tolist() == [1, 1, 1, 0, 0]
     assert counted["negative"].tolist() == [1, 1, 1, 1, 0]
     review(corrected.singularities, corrected.trajectories, corrected.events, counted, (40, 40))
+
+
+def test_confirming_one_of_a_close_pair_leaves_the_other_to_be_looked_at() -> None:
+    pair = pd.DataFrame({"frame": 0, "y_px": 10.0, "x_px": [10.0, 10.2], "charge": [1, -1]})
+    pair = conform(pair.assign(singularity=[0, 1], trust=0.5, origin="found"), SINGULARITIES)
+    edit = Confirm(frame=0, where=(10.0, 10.0), charge=1)
+    table = review(
+        pair, conform(pair.assign(track=[0, 1], link=""), TRAJECTORIES), empty(EVENTS),
+        empty(FRAMES), (40, 40), edits=[edit],
+    )  # fmt: skip
+    listed = table[table["what"] == "singularity"].set_index("charge")["done"]
+    assert listed.to_dict() == {1: True, -1: False}
