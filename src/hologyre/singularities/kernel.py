@@ -220,3 +220,14 @@ def values_at(planes, table, places):  # type: ignore[no-untyped-def]
     for n in range(places.shape[0]):
         out[n] = value_at(planes, table, places[n, 0], places[n, 1], work)
     return out
+
+
+@numba.njit(cache=True, nogil=True)
+def jets_at(planes, table, places):  # type: ignore[no-untyped-def]
+    """Return E, dE/dy and dE/dx, (n, 3) and per step, at places (n, 2) in node coordinates."""
+    out = np.empty((places.shape[0], 3), dtype=np.complex128)
+    work = scratch()
+    for n in range(places.shape[0]):
+        e, ey, ex = value_and_slopes(planes, table, places[n, 0], places[n, 1], work)
+        out[n, 0], out[n, 1], out[n, 2] = e, ey, ex
+    return out

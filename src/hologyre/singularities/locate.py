@@ -8,14 +8,12 @@ from numpy.typing import NDArray
 
 from hologyre.fields.noise import NoiseMap
 from hologyre.grid import Field
-from hologyre.singularities.cells import doubtful
 from hologyre.singularities.charges import UNRESOLVED, centred, joined
 from hologyre.singularities.core import cores
 from hologyre.singularities.lattice import lattice_of
 from hologyre.singularities.robustness import robustness
 from hologyre.singularities.search import find_zeros
 from hologyre.singularities.trust import noise_share, trust, trust_of_higher
-from hologyre.singularities.winding import bends, cell_turns, dark_cells, lattice_turns
 from hologyre.tables import SINGULARITIES, conform, empty
 
 
@@ -60,13 +58,7 @@ def locate_singularities(
     lattice = lattice_of(field, margin_px=margin_px)
     if lattice is None:
         return empty(SINGULARITIES)
-    planes, table = lattice.planes, lattice.table
-    bend = bends(planes)
-    turns = cell_turns(*lattice_turns(planes, table, bend))
-    doubt = doubtful(planes, bend)
-    dark = dark_cells(planes, lattice.floor)
-    turns[dark], doubt[dark] = 0, False
-    zeros = find_zeros(planes, table, bend, turns, doubt, lattice.coarse, lattice.floor)
+    zeros, turns, bend = find_zeros(lattice)
     if zeros.shape[0] == 0:
         return empty(SINGULARITIES)
     variance = _variance_at(noise, *lattice.to_px(zeros[:, 0], zeros[:, 1]))
@@ -102,6 +94,8 @@ def locate_singularities(
         cov[row] = 0.0
         ratio[row] = orientation[row] = np.nan
         sure[row] = trust_of_higher(float(level[row]), error, float(variance[row]))
+    with np.errstate(divide="ignore"):
+        over_noise = level / np.sqrt(variance)
     found = pd.DataFrame(
         {
             "frame": np.zeros(charge.size, dtype=np.int64),
@@ -112,7 +106,7 @@ def locate_singularities(
             "sigma_x_px": np.sqrt(var_x),
             "cov_yx_px2": cov,
             "robustness": level,
-            "robustness_snr": level / np.sqrt(variance),
+            "robustness_snr": over_noise,
             "trust": sure,
             "axis_ratio": ratio,
             "orientation_rad": orientation,

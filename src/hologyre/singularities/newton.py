@@ -7,7 +7,7 @@ import numba
 from hologyre.singularities.kernel import value_and_slopes
 
 COLUMNS = 9
-"""Columns of a table of zeros, see `find_zeros`."""
+"""Columns of a table of zeros, see `hologyre.singularities.search.Found`."""
 
 _LEFT = 2e-8
 """Distance from the zero, in steps, that may be left."""

@@ -6,51 +6,61 @@ to compile them short.
 
 from __future__ import annotations
 
+from typing import NamedTuple
+
 import numba
 import numpy as np
 from numpy.typing import NDArray
 
-from hologyre.singularities.cells import PARTS, cut_cell, cut_part, judge, judge_parts
+from hologyre.singularities.cells import (
+    PARTS,
+    cut_cell,
+    cut_part,
+    doubtful,
+    judge,
+    judge_parts,
+)
 from hologyre.singularities.halving import halve
 from hologyre.singularities.kernel import scratch
+from hologyre.singularities.lattice import Lattice
 from hologyre.singularities.newton import COLUMNS, newton
+from hologyre.singularities.winding import bends, cell_turns, dark_cells, lattice_turns
 
 _MOST_PARTS = 128
 
 
-def find_zeros(
-    planes: NDArray[np.float64],
-    table: NDArray[np.float64],
-    bend: NDArray[np.float64],
-    turns: NDArray[np.int8],
-    doubt: NDArray[np.bool_],
-    coarse: float,
-    floor: float,
-) -> NDArray[np.float64]:
-    """Find the zeros of all cells of a lattice.
+class Found(NamedTuple):
+    """What a search finds.
 
-    Parameters
+    Attributes
     ----------
-    planes, table, coarse, floor
-        The lattice's.
-    bend : (4, ny, nx) array
-        Second differences at the nodes.
-    turns : (ny-1, nx-1) int8 array
-        Winding of each cell.
-    doubt : (ny-1, nx-1) bool array
-        Cells without winding that may hold zeros.
-
-    Returns
-    -------
-    (n, 9) array
+    zeros : (n, 9) array
         Node coordinates y, x; real and imaginary part of the slopes along y and along x, per
         step; charge; 0 or, where Newton could not settle, the side of the smallest square
         around the zero; number of the lattice cell, row by row.
+    turns : (ny-1, nx-1) int8 array
+        Winding of each cell; 0 where the field is dark.
+    bend : (4, ny, nx) array
+        Second differences at the nodes, as `bends` gives them.
     """
-    seen, cells = _at_sight(planes, table, bend, turns, doubt, coarse)
-    closer, squares = _closer(planes, table, bend, turns, cells, coarse)
-    halved = halve(planes, table, bend, squares, floor)
-    return np.concatenate([seen, closer, halved])
+
+    zeros: NDArray[np.float64]
+    turns: NDArray[np.int8]
+    bend: NDArray[np.float64]
+
+
+def find_zeros(lattice: Lattice) -> Found:
+    """Find the zeros of all cells of a lattice."""
+    planes, table = lattice.planes, lattice.table
+    bend = bends(planes)
+    turns = cell_turns(*lattice_turns(planes, table, bend))
+    doubt = doubtful(planes, bend)
+    dark = dark_cells(planes, lattice.floor)
+    turns[dark], doubt[dark] = 0, False
+    seen, cells = _at_sight(planes, table, bend, turns, doubt, lattice.coarse)
+    closer, squares = _closer(planes, table, bend, turns, cells, lattice.coarse)
+    halved = halve(planes, table, bend, squares, lattice.floor)
+    return Found(np.concatenate([seen, closer, halved]), turns, bend)
 
 
 @numba.njit(cache=True, nogil=True)
