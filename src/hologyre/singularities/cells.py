@@ -97,31 +97,52 @@ def doubtful(planes, bend):  # type: ignore[no-untyped-def]
         re, im = planes[0, j + HALO], planes[1, j + HALO]
         re_n, im_n = planes[0, j + HALO + 1], planes[1, j + HALO + 1]
         p, q, p_n, q_n = bend[2, j], bend[3, j], bend[2, j + 1], bend[3, j + 1]
+        row = out[j]
+        # The corners' mean as the direction first: a loop without branches, many cells at once.
         for i in range(nx - 1):
             c = i + HALO
-            s_re = 0.25 * (p[i] + p[i + 1] + p_n[i] + p_n[i + 1])
-            s_im = 0.25 * (q[i] + q[i + 1] + q_n[i] + q_n[i + 1])
-            spread = max(
-                max(
-                    (p[i] - s_re) ** 2 + (q[i] - s_im) ** 2,
-                    (p[i + 1] - s_re) ** 2 + (q[i + 1] - s_im) ** 2,
-                ),
-                max(
-                    (p_n[i] - s_re) ** 2 + (q_n[i] - s_im) ** 2,
-                    (p_n[i + 1] - s_re) ** 2 + (q_n[i + 1] - s_im) ** 2,
-                ),
+            m_re = re[c] + re[c + 1] + re_n[c] + re_n[c + 1]
+            m_im = im[c] + im[c + 1] + im_n[c] + im_n[c + 1]
+            s_re, s_im, bow = _drawn(p, q, p_n, q_n, i)
+            least = min(
+                min(m_re * re[c] + m_im * im[c], m_re * re[c + 1] + m_im * im[c + 1]),
+                min(m_re * re_n[c] + m_im * im_n[c], m_re * re_n[c + 1] + m_im * im_n[c + 1]),
             )
-            around = BEND_SLACK * np.sqrt(spread) + 0.05 * np.sqrt(s_re * s_re + s_im * s_im)
-            out[j, i] = near_zero(
-                (re[c], im[c]),
-                (re[c + 1], im[c + 1]),
-                (re_n[c + 1], im_n[c + 1]),
-                (re_n[c], im_n[c]),
-                s_re / 8.0,
-                s_im / 8.0,
-                around / 8.0,
-            )
+            least -= max(0.0, m_re * s_re + m_im * s_im)
+            row[i] = least <= bow * np.sqrt(m_re * m_re + m_im * m_im)
+        for i in range(nx - 1):
+            if row[i]:
+                c = i + HALO
+                s_re, s_im, bow = _drawn(p, q, p_n, q_n, i)
+                row[i] = near_zero(
+                    (re[c], im[c]),
+                    (re[c + 1], im[c + 1]),
+                    (re_n[c + 1], im_n[c + 1]),
+                    (re_n[c], im_n[c]),
+                    s_re,
+                    s_im,
+                    bow,
+                )
     return out
+
+
+@numba.njit(cache=True, nogil=True)
+def _drawn(p, q, p_n, q_n, i):  # type: ignore[no-untyped-def]
+    """Return how far a cell is drawn, and how far around that its image may be."""
+    s_re = 0.25 * (p[i] + p[i + 1] + p_n[i] + p_n[i + 1])
+    s_im = 0.25 * (q[i] + q[i + 1] + q_n[i] + q_n[i + 1])
+    spread = max(
+        max(
+            (p[i] - s_re) ** 2 + (q[i] - s_im) ** 2,
+            (p[i + 1] - s_re) ** 2 + (q[i + 1] - s_im) ** 2,
+        ),
+        max(
+            (p_n[i] - s_re) ** 2 + (q_n[i] - s_im) ** 2,
+            (p_n[i + 1] - s_re) ** 2 + (q_n[i + 1] - s_im) ** 2,
+        ),
+    )
+    around = BEND_SLACK * np.sqrt(spread) + 0.05 * np.sqrt(s_re * s_re + s_im * s_im)
+    return s_re / 8.0, s_im / 8.0, around / 8.0
 
 
 @numba.njit(cache=True, nogil=True)

@@ -28,13 +28,14 @@ def _nearest2(a_re, a_im, b_re, b_im):  # type: ignore[no-untyped-def]
 
 @numba.njit(cache=True, nogil=True)
 def edge_levels(planes):  # type: ignore[no-untyped-def]
-    """Return the least |E|^2 along every edge: along y (ny-1, nx) and along x (ny, nx-1).
+    """Return the least |E| along every edge: along y (ny-1, nx) and along x (ny, nx-1).
 
     Each edge is taken as two chords that meet at its middle.
     """
     ny, nx = planes.shape[1] - 2 * HALO, planes.shape[2] - 2 * HALO
-    along_y = np.empty((ny - 1, nx))
-    along_x = np.empty((ny, nx - 1))
+    # For the order of levels; those that count are found again at their saddles.
+    along_y = np.empty((ny - 1, nx), dtype=np.float32)
+    along_x = np.empty((ny, nx - 1), dtype=np.float32)
     h0, h1, h2, h3 = _HALF
     for j in range(ny):
         re, im = planes[0, j + HALO], planes[1, j + HALO]
@@ -52,9 +53,8 @@ def edge_levels(planes):  # type: ignore[no-untyped-def]
                 + h2 * (im[c - 2] + im[c + 3])
                 + h3 * (im[c - 3] + im[c + 4])
             )
-            along_x[j, i] = min(
-                _nearest2(re[c], im[c], m_re, m_im), _nearest2(m_re, m_im, re[c + 1], im[c + 1])
-            )
+            first = _nearest2(re[c], im[c], m_re, m_im)
+            along_x[j, i] = np.sqrt(min(first, _nearest2(m_re, m_im, re[c + 1], im[c + 1])))
         if j == ny - 1:
             continue
         r = j + HALO
@@ -72,10 +72,9 @@ def edge_levels(planes):  # type: ignore[no-untyped-def]
                 + h2 * (planes[1, r - 2, c] + planes[1, r + 3, c])
                 + h3 * (planes[1, r - 3, c] + planes[1, r + 4, c])
             )
-            along_y[j, i] = min(
-                _nearest2(re[c], im[c], m_re, m_im),
-                _nearest2(m_re, m_im, planes[0, r + 1, c], planes[1, r + 1, c]),
-            )
+            first = _nearest2(re[c], im[c], m_re, m_im)
+            last = _nearest2(m_re, m_im, planes[0, r + 1, c], planes[1, r + 1, c])
+            along_y[j, i] = np.sqrt(min(first, last))
     return along_y, along_x
 
 
@@ -141,8 +140,8 @@ def passes(basin, along_y, along_x):  # type: ignore[no-untyped-def]
 
     Returns
     -------
-    level : (n,) array
-        Least |E|^2 along the edge.
+    level : (n,) float32 array
+        Least |E| along the edge.
     ends : (n, 2) int32 array
         The basins on either side.
     edge : (n,) int64 array
@@ -150,7 +149,7 @@ def passes(basin, along_y, along_x):  # type: ignore[no-untyped-def]
     """
     ny, nx = along_y.shape[0], along_x.shape[1]
     room, count = 4096, 0
-    level = np.empty(room)
+    level = np.empty(room, dtype=np.float32)
     ends = np.empty((room, 2), dtype=np.int32)
     edge = np.empty(room, dtype=np.int64)
     for axis in range(2):
@@ -160,7 +159,7 @@ def passes(basin, along_y, along_x):  # type: ignore[no-untyped-def]
         for j in range(rows):
             if count + columns > room:
                 more = room + columns
-                level = np.concatenate((level, np.empty(more)))
+                level = np.concatenate((level, np.empty(more, dtype=np.float32)))
                 ends = np.concatenate((ends, np.empty((more, 2), dtype=np.int32)))
                 edge = np.concatenate((edge, np.empty(more, dtype=np.int64)))
                 room += more
@@ -200,7 +199,7 @@ def merge(order, level, ends, charge, alike):  # type: ignore[no-untyped-def]
     charge : (basins,) int32 array
         Charge of each basin, 0 for the outside; changed on the way.
     alike : (basins,) array
-        |E|^2 up to which like charges that meet cannot be told apart, at each basin.
+        |E| up to which like charges that meet cannot be told apart, at each basin.
 
     Returns
     -------

@@ -64,7 +64,7 @@ def robustness(
     placed = np.flatnonzero(turns.ravel()[cell] != 0)
     home = basin[cell[placed]]
     alike = np.zeros(bottom.size)
-    alike[home] = blur[placed] ** 2
+    alike[home] = blur[placed]
     level, ends, edge = passes(basin, along_y, along_x)
     end, group = merge(np.argsort(level), level, ends, charge, alike)
     last = end[home]
@@ -90,7 +90,7 @@ def robustness(
 def _heights(
     lattice: Lattice,
     edge: NDArray[np.int64],
-    level: NDArray[np.float64],
+    level: NDArray[np.float32],
     middle: NDArray[np.float64],
     shape: tuple[int, int],
 ) -> NDArray[np.float64]:
@@ -101,7 +101,7 @@ def _heights(
     lattice : Lattice
         The field.
     edge, level : (n,) arrays
-        Edges they meet across, and the least |E|^2 on each by its chords.
+        Edges they meet across, and the least |E| on each by its chords.
     middle : (n, 2) array
         Middle of the zeros that meet, node coordinates.
     shape : (int, int)
@@ -111,7 +111,7 @@ def _heights(
     places, reach = _places_on(lattice, start, along_x)
     across = np.where(along_x, start[:, 0], start[:, 1])
     on_border = (across == 0) | (across == np.where(along_x, *shape))
-    chord = np.sqrt(level)
+    chord = level.astype(np.float64)
     height, sought = chord.copy(), np.flatnonzero(~on_border)
     for tried in (places, middle):
         saddle = polish(lattice.planes, lattice.table, tried[sought])[:, 2]

@@ -32,32 +32,29 @@ def _basis_at(u, weights):  # type: ignore[no-untyped-def]
 
 
 @numba.njit(cache=True, nogil=True)
-def _curved(planes, y, x, across, down, row):  # type: ignore[no-untyped-def]
+def _curved(planes, y, x, across, down):  # type: ignore[no-untyped-def]
     """Return half the gradient and half the Hessian of |E|^2, by short stencils."""
     j = min(max(int(np.floor(y)), 0), planes.shape[1] - 2 * HALO - 2)
     i = min(max(int(np.floor(x)), 0), planes.shape[2] - 2 * HALO - 2)
     _basis_at(y - j, down)
     _basis_at(x - i, across)
-    row[:] = 0.0
-    for part in range(2):
-        for r in range(STENCIL):
-            for d in range(3):
-                weight = down[d, r]
-                for k in range(STENCIL):
-                    row[part, d, k] += (
-                        weight * planes[part, j + HALO - FIRST + r, i + HALO - FIRST + k]
-                    )
     gy = gx = hyy = hxx = hyx = 0.0
+    c = i + HALO - FIRST
     for part in range(2):
         e = ey = ex = eyy = eyx = exx = 0.0
-        for k in range(STENCIL):
-            a, b = across[0, k], across[1, k]
-            e += a * row[part, 0, k]
-            ey += a * row[part, 1, k]
-            eyy += a * row[part, 2, k]
-            ex += b * row[part, 0, k]
-            eyx += b * row[part, 1, k]
-            exx += across[2, k] * row[part, 0, k]
+        for r in range(STENCIL):
+            row = planes[part, j + HALO - FIRST + r]
+            value = slope = curve = 0.0
+            for k in range(STENCIL):
+                value += across[0, k] * row[c + k]
+                slope += across[1, k] * row[c + k]
+                curve += across[2, k] * row[c + k]
+            e += down[0, r] * value
+            ex += down[0, r] * slope
+            exx += down[0, r] * curve
+            ey += down[1, r] * value
+            eyx += down[1, r] * slope
+            eyy += down[2, r] * value
         gy += e * ey
         gx += e * ex
         hyy += ey * ey + e * eyy
@@ -77,12 +74,11 @@ def polish(planes, table, places):  # type: ignore[no-untyped-def]
     """
     out = np.full((places.shape[0], 3), np.nan)
     across, down = np.empty((3, STENCIL)), np.empty((3, STENCIL))
-    row = np.empty((2, 3, STENCIL))
     work = scratch()
     for n in range(places.shape[0]):
         y, x = places[n]
         for _ in range(30):
-            gy, gx, hyy, hxx, hyx = _curved(planes, y, x, across, down, row)
+            gy, gx, hyy, hxx, hyx = _curved(planes, y, x, across, down)
             dy, dx = _towards_saddle(gy, gx, hyy, hxx, hyx)
             far = max(abs(dy), abs(dx))
             if far > 0.5:

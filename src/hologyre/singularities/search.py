@@ -40,13 +40,13 @@ class Found(NamedTuple):
         around the zero; number of the lattice cell, row by row.
     turns : (ny-1, nx-1) int8 array
         Winding of each cell; 0 where the field is dark.
-    bend : (4, ny, nx) array
+    bend : (4, ny, nx) float32 array
         Second differences at the nodes, as `bends` gives them.
     """
 
     zeros: NDArray[np.float64]
     turns: NDArray[np.int8]
-    bend: NDArray[np.float64]
+    bend: NDArray[np.float32]
 
 
 def find_zeros(lattice: Lattice) -> Found:

@@ -23,7 +23,8 @@ WITHIN_PX = 2.0
 """How far the noise-free field's zero may lie for a zero to count as real, hologram pixels."""
 
 _TAIL = 4.5
-_CERTAIN = 7.0
+_CERTAIN = 6.0
+"""Standard deviations of noise beyond which nothing is left to average over."""
 
 
 class NoiseShare(NamedTuple):
@@ -40,7 +41,7 @@ class NoiseShare(NamedTuple):
     curvature: float
 
 
-def noise_share(lattice: Lattice, bend: NDArray[np.float64]) -> NoiseShare:
+def noise_share(lattice: Lattice, bend: NDArray[np.float32]) -> NoiseShare:
     """Compare a field's mean squares with those of noise that fills its disc of frequencies.
 
     Both are taken through the same differences between nodes, which then need not be those of
@@ -65,7 +66,7 @@ def noise_share(lattice: Lattice, bend: NDArray[np.float64]) -> NoiseShare:
         noise[1] += float(turn.mean()) / step**2
         noise[2] += float((turn**2).mean()) / step**4
         power[1] += float(np.mean(np.diff(inner, axis=1 + axis) ** 2)) * 2 / step**2
-        power[2] += float(np.mean(bend[axis] ** 2)) / step**4
+        power[2] += float(np.mean(bend[axis] ** 2, dtype=np.float64)) / step**4
     shares = [n / p if p > 0 else math.inf for n, p in zip(noise, power, strict=True)]
     return NoiseShare(*shares)
 
@@ -158,33 +159,35 @@ def _survival(  # type: ignore[no-untyped-def]
         if not sigma0[n] >= 0.0 or not robustness[n] > 0.0:
             out[n] = np.nan if not sigma0[n] >= 0.0 else 0.0
             continue
-        far = WITHIN_PX * min(flat[n] * kept1[n], math.sqrt(robustness[n] * sigma0[n]))
-        if sigma0[n] == 0.0 or (
-            robustness[n] > _CERTAIN * sigma0[n] and far > 2 * _CERTAIN * sigma0[n]
-        ):
+        slope = flat[n] * kept1[n]
+        # Well below the fold's top, within reach, and with a slope that noise cannot turn.
+        far = min(0.5 * robustness[n], WITHIN_PX * slope) > _CERTAIN * sigma0[n]
+        if sigma0[n] == 0.0 or (far and slope > _CERTAIN * sigma1[n]):
             out[n] = 1.0
             continue
         bend = kept2[n] * flat[n] ** 2 / (2.0 * robustness[n])
         total = 0.0
         for a in range(place1.size):
-            slope = kept1[n] * flat[n] - sigma1[n] * place1[a]
+            turned = slope - sigma1[n] * place1[a]
             for b in range(place2.size):
                 curve = max(abs(bend - sigma2[n] * place2[b]), 1e-9 * bend)
                 # The zero lies at v when the noise is n0 = slope v + curve v^2 / 2; beyond the
                 # fold's top, or in the tail, or too far away, there is nothing to add.
                 reach = curve * _TAIL * sigma0[n]
-                low = max((math.sqrt(max(slope**2 - 2.0 * reach, 0.0)) - slope) / curve, -WITHIN_PX)
-                high = min((math.sqrt(slope**2 + 2.0 * reach) - slope) / curve, WITHIN_PX)
+                low = max(
+                    (math.sqrt(max(turned**2 - 2.0 * reach, 0.0)) - turned) / curve, -WITHIN_PX
+                )
+                high = min((math.sqrt(turned**2 + 2.0 * reach) - turned) / curve, WITHIN_PX)
                 if low >= high:
                     continue
                 half = 0.5 * (high - low)
                 part = 0.0
                 for c in range(place0.size):
                     v = low + half * (place0[c] + 1.0)
-                    z = v * (slope + 0.5 * curve * v) / sigma0[n]
+                    z = v * (turned + 0.5 * curve * v) / sigma0[n]
                     room = math.sqrt(WITHIN_PX * WITHIN_PX - v * v)
                     aside = math.erf(room * steep[n] / (sigma0[n] * math.sqrt(2.0)))
-                    part += weight0[c] * math.exp(-0.5 * z * z) * (slope + curve * v) * aside
+                    part += weight0[c] * math.exp(-0.5 * z * z) * (turned + curve * v) * aside
                 total += weight1[a] * weight2[b] * half * part / sigma0[n]
         out[n] = min(total / math.sqrt(2.0 * math.pi), 1.0)
     return out

@@ -84,11 +84,12 @@ def bends(planes):  # type: ignore[no-untyped-def]
 
     Returns
     -------
-    (4, ny, nx) array
+    (4, ny, nx) float32 array
         Size of the one along y and of the one along x; real and imaginary part of their sum.
     """
     ny, nx = planes.shape[1] - 2 * HALO, planes.shape[2] - 2 * HALO
-    out = np.empty((4, ny, nx))
+    # Bounds and directions only: single precision halves what has to be written and read.
+    out = np.empty((4, ny, nx), dtype=np.float32)
     for j in range(ny):
         above, here, below = planes[:, j + HALO - 1], planes[:, j + HALO], planes[:, j + HALO + 1]
         for i in range(nx):
