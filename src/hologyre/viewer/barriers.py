@@ -8,13 +8,12 @@ from dataclasses import dataclass
 import numpy as np
 from numpy.typing import NDArray
 
-from hologyre.analyse import wrapped_phase
+from hologyre.analyse import unwrap_field
 from hologyre.edits import Barrier, Bridge, Edit
 from hologyre.edits.kinds import Point
-from hologyre.fields.interpolate import on_pixels
 from hologyre.grid import Field
 from hologyre.phase.residues import residues
-from hologyre.phase.unwrap import Unwrapped, unwrap
+from hologyre.phase.unwrap import Unwrapped
 from hologyre.recipe import PhaseSettings
 
 
@@ -49,18 +48,8 @@ def unwrap_along(field: Field, settings: PhaseSettings, lines: Lines) -> Unwrapp
     ShutInError
         If bridges leave a residue no way out.
     """
-    phase = wrapped_phase(field)
-    valid = np.isfinite(phase)
-    weight = None
-    if settings.weight == "amplitude":
-        amplitude = np.abs(on_pixels(field))
-        weight = np.where(valid, amplitude / amplitude[valid].max(), 0)
-    return unwrap(
-        phase,
-        weight=weight,
-        valid=None if valid.all() else valid,
-        barriers=_arrays(lines.barriers),
-        bridges=_arrays(lines.bridges),
+    return unwrap_field(
+        field, settings, barriers=_arrays(lines.barriers), bridges=_arrays(lines.bridges)
     )
 
 
