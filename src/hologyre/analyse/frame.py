@@ -14,10 +14,10 @@ from hologyre.analyse.planning import Plan
 from hologyre.fields.carrier import NoFringes, find_carrier
 from hologyre.fields.compensate import compensate
 from hologyre.fields.demodulate import demodulate
-from hologyre.fields.interpolate import evaluate
 from hologyre.fields.noise import NoiseMap, field_noise
 from hologyre.fields.refocus import refocus
 from hologyre.grid import Field, Window
+from hologyre.singularities.balance import charge_balance
 from hologyre.singularities.locate import locate_singularities
 from hologyre.stacks import StackError
 from hologyre.survey import (
@@ -32,10 +32,6 @@ from hologyre.tables import SINGULARITIES, conform, empty
 # band power over noise power, and visibility, under which a frame is asked whether it has fringes
 _FAINT_POWER = 4.0
 _FAINT_VISIBILITY = 0.05
-
-# along the border, steps of the phase beyond this are halved, at most so often
-_STEEP_RAD = 1.0
-_HALVINGS = 12
 
 
 @dataclass(frozen=True, eq=False)
@@ -97,7 +93,8 @@ def measure(plan: Plan, frame: int) -> FrameResult:
     searched = shown if plan.recipe.refocus.distance_um else field
     margin_px = plan.recipe.singularities.margin_px
     table = locate_singularities(searched, noise=noise, margin_px=margin_px)
-    known["border_winding"] = border_winding(searched, margin_px)
+    balance = charge_balance(searched, table, margin_px=margin_px)
+    known["border_winding"] = balance.border_winding
     return _done(plan, frame, shown, table, known | taken_out)
 
 
@@ -185,39 +182,6 @@ def mean_power(field: Field) -> float:
     valid, (rows, columns) = field.grid.valid, field.shape
     inside = valid.contains(field.grid.y_px(rows)[:, None], field.grid.x_px(columns))
     return float(np.mean(np.abs(field.values[inside]) ** 2, dtype=np.float64))
-
-
-def border_winding(field: Field, margin_px: float = 0.0) -> int:
-    """Return the turns of the phase along the border of the field's valid part.
-
-    It is the net charge inside when every singularity is found.
-    """
-    valid = field.grid.valid
-    y = _side(valid.y_min + margin_px, valid.y_max - margin_px, field.radius_per_px)
-    x = _side(valid.x_min + margin_px, valid.x_max - margin_px, field.radius_per_px)
-    # from +x to +y: along the top, down the right, back along the bottom, up the left
-    path_y = np.concatenate([np.full(x.size, y[0]), y, np.full(x.size, y[-1]), y[::-1]])
-    path_x = np.concatenate([x, np.full(y.size, x[-1]), x[::-1], np.full(y.size, x[0])])
-    value = evaluate(field, path_y, path_x)[0]
-    for _ in range(_HALVINGS):
-        turn = np.angle(np.roll(value, -1) * value.conj())
-        steep = np.flatnonzero(np.abs(turn) > _STEEP_RAD)
-        if not steep.size:
-            break
-        # a zero is near: look closer
-        middle_y, middle_x = (
-            (path[steep] + np.roll(path, -1)[steep]) / 2 for path in (path_y, path_x)
-        )
-        value = np.insert(value, steep + 1, evaluate(field, middle_y, middle_x)[0])
-        path_y, path_x = (
-            np.insert(path, steep + 1, middle)
-            for path, middle in ((path_y, middle_y), (path_x, middle_x))
-        )
-    return round(float(np.angle(np.roll(value, -1) * value.conj()).sum() / (2 * np.pi)))
-
-
-def _side(first: float, last: float, radius: float) -> NDArray[np.float64]:
-    return np.linspace(first, last, max(2, int((last - first) * radius * 16) + 1))
 
 
 def _row(plan: Plan, frame: int, **known: Any) -> dict[str, Any]:
